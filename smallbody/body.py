@@ -496,7 +496,7 @@ class Body:
         return _build(table, faults)
 
     def to_dict(self) -> dict[str, Any]:
-        """Effective inputs as plain numbers, texts, lists and dictionaries, ready for JSON; what is not set is absent."""
+        """Effective inputs as numbers, texts, lists, dictionaries, ready for JSON; without what is not set."""
 
         def plain(value: Any) -> Any:
             if isinstance(value, dict):
@@ -582,14 +582,11 @@ def _wrong(section: str, key: str, value: Any) -> str:
     allowed = _allowed(info.annotation, info.metadata)
     unit = info.description or _unit(info.annotation)
     must = f"{section + '.' if section else ''}{key} = {_shown(value)} must be {allowed}{f' ({unit})' if unit else ''}"
-    if (
-        (section, key) == ("orbit", "e")
-        and isinstance(value, Real)
-        and not isinstance(value, bool)
-        and value >= E_LIMIT
-    ):
-        reason = "an open orbit has no mean rate" if value >= 1 else f"the solver is good up to {E_LIMIT}"
-        return f"{must}: {reason}"
+    if (section, key) == ("orbit", "e") and isinstance(value, (int, float)) and not isinstance(value, bool):
+        if value >= 1:
+            return f"{must}: an open orbit has no mean rate"
+        if value >= E_LIMIT:
+            return f"{must}: so close to open, the solver is not good enough"
     return must
 
 
@@ -612,7 +609,7 @@ def _missing(section: str, key: str) -> str:
 
 
 def _faults(error: ValidationError, table: Mapping[str, Any], section: str = "") -> list[_Fault]:
-    """Pydantic's findings as (dotted key, message), once per key; `table` is what was given, {section: {key: value}}."""
+    """Pydantic's findings as (dotted key, message), once per key; `table` is what was given, section by section."""
     unknown: dict[str, _Fault] = {}
     missing: dict[str, _Fault] = {}
     other: dict[str, _Fault] = {}
@@ -841,4 +838,4 @@ def _remarks(body: Body, table: Mapping[str, Any]) -> Iterator[str]:
     if body.spin.pole_ecliptic_deg is not None:
         absent = [key for key in ("i_deg", "node_deg", "peri_deg") if key not in table["orbit"]]
         if absent:
-            yield f"{', '.join(absent)} of [orbit] taken as 0, though spin.pole_ecliptic_deg depends on the orbit's plane"
+            yield f"{', '.join(absent)} of [orbit] taken as 0, though the obliquity follows from them here"
