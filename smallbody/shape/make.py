@@ -1,0 +1,357 @@
+"""Bodies made from numbers: each maker gives a closed surface of near-uniform facets, the same for the same seed."""
+
+from __future__ import annotations
+
+import difflib
+import math
+from collections.abc import Callable
+from dataclasses import dataclass, field
+from typing import Any
+
+import numpy as np
+
+from smallbody.errors import ShapeError
+from smallbody.shape.grid import nearest_facet_count, sphere_grid
+from smallbody.shape.model import Made, Shape
+
+MOST_FACETS = 5_000_000
+
+Radius = Callable[[np.ndarray], np.ndarray]  # (n, 3) unit vectors to (n,) distances from the body's middle
+
+
+@dataclass(frozen=True)
+class Number:
+    """A number that a maker takes: what it is, its default, and the range it may have."""
+
+    about: str
+    default: float
+    low: float
+    high: float
+    whole: bool = False
+
+
+@dataclass(frozen=True)
+class Kind:
+    """A kind of body that `make_shape` makes.
+
+    about : one line
+    radius : from checked numbers and a random generator to the radius in every direction, in any unit
+    numbers : what it takes besides `diameter_km`
+    fewest : facets
+    principal : turned to its principal axes once made (for bodies without an axis of their own)
+    even : facets are spread evenly over the surface, not only in direction
+    """
+
+    about: str
+    radius: Callable[[dict[str, Any], np.random.Generator], Radius]
+    numbers: dict[str, Number] = field(default_factory=dict)
+    fewest: int = 80
+    principal: bool = False
+    even: bool = True
+
+
+def make_shape(kind: str, facets: int, seed: int = 0, *, nearest: bool = True, **numbers: Any) -> Shape:
+    """A body of some kind, centre of mass at the origin, by default as large as a sphere of 1 km diameter.
+
+    kind : one of `KINDS`
+    facets : how many; the nearest of 20 n^2 and 60 n^2 (320, 500, 540, 720, 960, 980, ...) is made
+    seed : for kinds with chance in them; the same seed gives the same body, whatever the number of facets
+    numbers : `diameter_km` (of the sphere with the same volume) and the numbers of the kind; an ellipsoid's `axes`,
+        semi-axes in km, set its size unless diameter_km does
+    raises : ShapeError, for an unknown kind or number, or a number out of its range
+
+    >>> body = make_shape("sphere", 500)
+    >>> len(body.facets), round(body.diameter_m, 6)
+    (500, 1000.0)
+    """
+    if kind not in KINDS:
+        raise ShapeError(f"no kind of shape is called {kind!r}{_like(kind, KINDS)}; there are {', '.join(KINDS)}")
+    what = KINDS[kind]
+    facets = _whole("facets", facets, what.fewest, MOST_FACETS)
+    seed = _whole("seed", seed, 0, 2**63)
+    diameter_km = numbers.get("diameter_km")
+    if diameter_km is not None:
+        diameter_km = _number("diameter_km", diameter_km, Number("", 1.0, 1e-6, 1e6))
+    chosen = _chosen(kind, {k: v for k, v in numbers.items() if k != "diameter_km"})
+
+    radius = what.radius(chosen, np.random.default_rng(seed))
+    directions, triangles = sphere_grid(facets)
+    vertices = directions * radius(directions)[:, None]
+    if diameter_km is None:
+        diameter_km = 2.0 * float(np.cbrt(np.prod(chosen["axes"]))) if "axes" in chosen else 1.0
+
+    shape = Shape(vertices, triangles)
+    shape = shape.moved(-shape.mass.centre_m)
+    if what.principal:
+        shape = shape.turned(shape.mass.axes)
+    shape = shape.scaled(1000.0 * diameter_km / shape.diameter_m)
+    kept = {k: v for k, v in numbers.items() if v is not None}
+    return Shape(shape.vertices_m, shape.facets, made=Made(kind, nearest_facet_count(facets), seed, kept))
+
+
+def _chosen(kind: str, given: dict[str, Any]) -> dict[str, Any]:
+    known = KINDS[kind].numbers
+    names = [*known, *(["axes"] if kind == "ellipsoid" else [])]
+    for name in given:
+        if name not in names:
+            raise ShapeError(
+                f"a {kind} takes no {name!r}{_like(name, names)}; it takes {', '.join([*names, 'diameter_km'])}"
+            )
+    chosen: dict[str, Any] = {n: _number(n, given.get(n, d.default), d) for n, d in known.items()}
+    if kind == "ellipsoid":
+        axes = given.get("axes", (0.6, 0.5, 0.125 / 0.3))
+        if not isinstance(axes, list | tuple | np.ndarray) or len(axes) != 3:
+            raise ShapeError(f"an ellipsoid's axes are three semi-axes in km, not {axes!r}")
+        chosen["axes"] = [_number("axes", a, Number("", 1.0, 1e-6, 1e6)) for a in axes]
+        if max(chosen["axes"]) > 100.0 * min(chosen["axes"]):
+            raise ShapeError(f"an ellipsoid's longest axis is at most 100 times its shortest, not {axes!r}")
+    return chosen
+
+
+def _number(name: str, value: Any, wanted: Number) -> float | int:
+    if wanted.whole:
+        return _whole(name, value, int(wanted.low), int(wanted.high))
+    try:
+        number = math.nan if isinstance(value, bool | str | bytes) else float(value)
+    except (TypeError, ValueError):
+        number = math.nan
+    if not wanted.low <= number <= wanted.high:
+        raise ShapeError(f"{name} is a number from {wanted.low:g} to {wanted.high:g}, not {value!r}")
+    return number
+
+
+def _whole(name: str, value: Any, low: int, high: int) -> int:
+    try:
+        number = None if isinstance(value, bool | str | bytes) or int(value) != value else int(value)
+    except (TypeError, ValueError, OverflowError):
+        number = None
+    if number is None or not low <= number <= high:
+        raise ShapeError(f"{name} is a whole number from {low:,} to {high:,}, not {value!r}")
+    return number
+
+
+def _like(name: str, known: Any) -> str:
+    near = difflib.get_close_matches(name, list(known), n=1)
+    return f" (did you mean {near[0]!r}?)" if near else ""
+
+
+# Kinds, each a radius in every direction
+
+
+def _sphere(numbers: dict[str, Any], rng: np.random.Generator) -> Radius:
+    return lambda u: np.ones(len(u))
+
+
+def _ellipsoid(numbers: dict[str, Any], rng: np.random.Generator) -> Radius:
+    axes = np.array(numbers["axes"])
+    return lambda u: 1.0 / np.sqrt(((u / axes) ** 2).sum(axis=1))
+
+
+def _gaussian(numbers: dict[str, Any], rng: np.random.Generator) -> Radius:
+    """Gaussian random sphere: a log-radius with normal statistics and covariance coefficients C_l ~ l^-index, l >= 2.
+
+    source : K. Muinonen 1998, A&A 332, 1087; power law as in Muinonen & Lagerros 1998, A&A 333, 753
+    """
+    rough = gaussian_log_radius(rng, numbers["sigma"], numbers["index"], int(numbers["degree"]))
+    return lambda u: np.exp(rough(u))
+
+
+def gaussian_log_radius(rng: np.random.Generator, sigma: float, index: float, degree: int) -> Radius:
+    """One draw of the log-radius of a Gaussian random sphere.
+
+    sigma : relative standard deviation of the radius; that of its logarithm is sqrt(ln(1 + sigma^2))
+    index : C_l falls as l^-index; 2 <= l <= degree
+    """
+    l = np.arange(2, degree + 1)
+    share = l**-index
+    variance = math.log1p(sigma**2) * share / share.sum()
+    coefficients = np.zeros((degree + 1, degree + 1, 2))
+    for k, c in zip(l, variance):  # one coefficient of the 4 pi normalised harmonics has variance C_l / (2 l + 1)
+        coefficients[k, : k + 1] = math.sqrt(c / (2 * k + 1)) * rng.standard_normal((k + 1, 2))
+    coefficients[:, 0, 1] = 0.0
+
+    def log_radius(u: np.ndarray) -> np.ndarray:
+        return harmonics_sum(coefficients, u)
+
+    return log_radius
+
+
+def harmonics_sum(coefficients: np.ndarray, u: np.ndarray) -> np.ndarray:
+    """Sum of real spherical harmonics at unit vectors u (n, 3): (n,).
+
+    coefficients : (degree + 1, degree + 1, 2), those of cos(m lon) and sin(m lon), by l and m; harmonics normalised so
+        that their mean square over the sphere is 1
+    source : forward columns recursion (Holmes & Featherstone 2002, J. Geodesy 76, 279, eq. 11-13)
+    """
+    degree = len(coefficients) - 1
+    z = np.clip(u[:, 2], -1.0, 1.0)
+    s = np.hypot(u[:, 0], u[:, 1])
+    with np.errstate(invalid="ignore", divide="ignore"):
+        step = np.where(s > 0.0, (u[:, 0] + 1j * u[:, 1]) / np.where(s > 0.0, s, 1.0), 1.0)
+    total = np.zeros(len(u))
+    turn = np.ones(len(u), dtype=complex)
+    sectoral = np.ones(len(u))  # normalised P_mm
+    for m in range(degree + 1):
+        if m > 0:
+            sectoral = sectoral * s * math.sqrt((2 * m + 1) / (2 * m) * (2.0 if m == 1 else 1.0))
+            turn = turn * step
+        below, here = np.zeros(len(u)), sectoral
+        cosine = coefficients[m, m, 0] * here
+        sine = coefficients[m, m, 1] * here
+        for l in range(m + 1, degree + 1):
+            a = math.sqrt((2 * l - 1) * (2 * l + 1) / ((l - m) * (l + m)))
+            b = math.sqrt((2 * l + 1) * (l + m - 1) * (l - m - 1) / ((l - m) * (l + m) * (2 * l - 3))) if l > 1 else 0.0
+            below, here = here, a * z * here - b * below
+            cosine = cosine + coefficients[l, m, 0] * here
+            sine = sine + coefficients[l, m, 1] * here
+        total += turn.real * cosine + turn.imag * sine
+    return total
+
+
+def _top(numbers: dict[str, Any], rng: np.random.Generator) -> Radius:
+    """rho^2 + |z/c|^p = 1, rho from the axis: blunt at the poles, the sharper at the equator the nearer p is to 1."""
+    power, height = 2.0 - numbers["ridge"], numbers["height"]
+    rough = gaussian_log_radius(rng, numbers["roughness"], 3.0, 12)
+
+    def radius(u: np.ndarray) -> np.ndarray:
+        rho2, up = u[:, 0] ** 2 + u[:, 1] ** 2, np.abs(u[:, 2]) / height
+        return _root(lambda r: rho2 * r**2 + (up * r) ** power - 1.0, np.full(len(u), 3.0)) * np.exp(rough(u))
+
+    return radius
+
+
+def _twolobe(numbers: dict[str, Any], rng: np.random.Generator) -> Radius:
+    """Two ellipsoids that overlap, their union rounded at the neck; distances from a point in the neck, inside both.
+
+    With f1, f2 < 0 inside the lobes the surface is exp(-k f1) + exp(-k f2) = 1. On it both f are >= 0, hence growing
+    outwards along any ray from the neck (they are convex and negative there), so a ray meets the surface once.
+    """
+    small, neck, sharp = numbers["ratio"], numbers["neck"], 1.0 / numbers["blend"]
+    flat = np.array([1.0, numbers["flat"], numbers["flat"] ** 2])
+    rough = gaussian_log_radius(rng, numbers["roughness"], 3.0, 12)
+    ring = neck * small
+    lobes = [(1.0, -math.sqrt(1.0 - ring**2)), (small, math.sqrt(small**2 - ring**2))]
+
+    def outside(points: np.ndarray) -> np.ndarray:
+        distances = [np.sqrt((((points - [x, 0.0, 0.0]) / flat) ** 2).sum(axis=1)) - size for size, x in lobes]
+        low = np.minimum(*distances)
+        return np.asarray(low - np.log(sum(np.exp(-sharp * (d - low)) for d in distances)) / sharp)
+
+    def radius(u: np.ndarray) -> np.ndarray:
+        return _root(lambda r: outside(u * r[:, None]), np.full(len(u), 4.0)) * np.exp(rough(u))
+
+    return radius
+
+
+def _cratered(numbers: dict[str, Any], rng: np.random.Generator) -> Radius:
+    """Bowls with raised rims pressed one after the other into a mildly irregular body; sizes follow a power law."""
+    rough = gaussian_log_radius(rng, numbers["roughness"], 3.5, 10)
+    count, widest, depth = int(numbers["craters"]), math.radians(numbers["widest_deg"]), numbers["depth"]
+    z = rng.uniform(-1.0, 1.0, count)
+    lon = rng.uniform(0.0, 2.0 * math.pi, count)
+    place = np.stack([np.sqrt(1.0 - z**2) * np.cos(lon), np.sqrt(1.0 - z**2) * np.sin(lon), z], axis=1)
+    # cumulative number ~ size^-2, largest first, so that small ones lie in large ones
+    size = np.sort(widest / 2.0 * (1.0 - rng.uniform(0.0, 1.0 - 0.2**2, count)) ** 0.5)[::-1]
+    if count:
+        size[0] = widest / 2.0
+
+    def radius(u: np.ndarray) -> np.ndarray:
+        r = np.exp(rough(u))
+        for centre, half in zip(place, size):
+            x = np.arccos(np.clip(u @ centre, -1.0, 1.0)) / half  # 0 in the middle, 1 at the rim
+            floor = float(np.exp(rough(centre[None]))[0])
+            deep = 2.0 * half * depth * floor
+            bowl = deep * (1.25 * np.minimum(x, 1.0) ** 2 - 1.0)
+            wall = 0.25 * deep * np.exp(-(((np.maximum(x, 1.0) - 1.0) / 0.35) ** 2))
+            r = r + np.where(x < 1.0, bowl, wall)
+        return np.maximum(r, 0.2)
+
+    return radius
+
+
+def _windmill(numbers: dict[str, Any], rng: np.random.Generator) -> Radius:
+    """A sphere with blades from pole to pole: each rises gently along longitude and falls off steeply.
+
+    hand = +1: the steep faces look west, against the rotation (about +z). They see more of the Sun over a day than the
+    gentle slopes, which lean to the poles; the recoil of their heat pushes them east: the body spins up (no obliquity).
+    hand = -1 is the mirror image and spins down.
+    """
+    blades, height, steep, hand = int(numbers["blades"]), numbers["height"], numbers["steep"], numbers["hand"]
+
+    def radius(u: np.ndarray) -> np.ndarray:
+        lon = np.arctan2(u[:, 1], u[:, 0]) * blades / (2.0 * math.pi) * (-hand)
+        phase = lon - np.floor(lon)
+        saw = np.where(phase < 1.0 - steep, phase / (1.0 - steep), (1.0 - phase) / steep)
+        return 1.0 + height * saw * (u[:, 0] ** 2 + u[:, 1] ** 2)
+
+    return radius
+
+
+def _root(f: Callable[[np.ndarray], np.ndarray], high: np.ndarray) -> np.ndarray:
+    """Where f, negative at 0 and positive at `high`, passes zero: bisection to the last digits."""
+    low = np.zeros_like(high)
+    for _ in range(56):
+        middle = 0.5 * (low + high)
+        inside = f(middle) < 0.0
+        low, high = np.where(inside, middle, low), np.where(inside, high, middle)
+    return 0.5 * (low + high)
+
+
+_ROUGH = Number("relative standard deviation of the radius by a random roughness", 0.03, 0.0, 0.15)
+
+KINDS: dict[str, Kind] = {
+    "sphere": Kind("a sphere", _sphere, fewest=20, even=False),
+    "ellipsoid": Kind("a triaxial ellipsoid (axes: three semi-axes, km)", _ellipsoid, fewest=20),
+    "gaussian": Kind(
+        "a Gaussian random sphere",
+        _gaussian,
+        {
+            "sigma": Number("relative standard deviation of the radius", 0.2, 0.0, 0.5),
+            "index": Number("the covariance falls with degree l as l to minus this", 3.5, 1.0, 8.0),
+            "degree": Number("highest degree of the harmonics", 10, 2, 60, whole=True),
+        },
+        principal=True,
+    ),
+    "top": Kind(
+        "a spinning top with an equatorial ridge",
+        _top,
+        {
+            "ridge": Number("sharpness of the ridge, 0 (none) to 0.9", 0.7, 0.0, 0.9),
+            "height": Number("pole over equator", 0.9, 0.5, 1.0),
+            "roughness": _ROUGH,
+        },
+    ),
+    "twolobe": Kind(
+        "two lobes in contact, with a neck",
+        _twolobe,
+        {
+            "ratio": Number("radius of the smaller lobe over that of the larger", 0.75, 0.4, 1.0),
+            "neck": Number("radius of the neck over that of the smaller lobe", 0.45, 0.25, 0.9),
+            "flat": Number("y over x axis of a lobe, and z over y", 0.92, 0.7, 1.0),
+            "blend": Number("rounding at the neck, in radii of the larger lobe", 0.02, 0.005, 0.1),
+            "roughness": _ROUGH,
+        },
+        principal=True,
+    ),
+    "cratered": Kind(
+        "an irregular body with bowls pressed into it",
+        _cratered,
+        {
+            "craters": Number("how many", 40, 0, 500, whole=True),
+            "widest_deg": Number("diameter of the largest, degrees seen from the middle", 50.0, 5.0, 90.0),
+            "depth": Number("depth over diameter", 0.18, 0.0, 0.3),
+            "roughness": Number("relative standard deviation of the radius of the body below", 0.08, 0.0, 0.2),
+        },
+        principal=True,
+    ),
+    "windmill": Kind(
+        "a sphere with blades, which sunlight spins up (hand 1) or down (hand -1)",
+        _windmill,
+        {
+            "blades": Number("how many", 4, 2, 12, whole=True),
+            "height": Number("of a blade, in radii of the sphere", 0.3, 0.02, 0.6),
+            "steep": Number("part of a blade's width that its steep side takes", 0.15, 0.05, 0.5),
+            "hand": Number("1 spins up, -1 down", 1, -1, 1, whole=True),
+        },
+    ),
+}
