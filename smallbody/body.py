@@ -104,19 +104,20 @@ Text = Annotated[str, BeforeValidator(_text)]
 Angle = Annotated[Number, Field(ge=-360.0, le=360.0)]
 
 
-def _peel(annotation: Any, metadata: Iterable[Any] = ()) -> tuple[Any, list[Any]]:
-    """The type itself and the constraints on it, freed from Annotated and from `| None`."""
-    constraints = list(metadata)
+def _peel(annotation: Any, metadata: Iterable[Any] = ()) -> tuple[Any, list[Any], str]:
+    """The type itself, the constraints on it and its unit, freed from Annotated and from `| None`."""
+    constraints, unit = list(metadata), ""
     while True:
         origin = typing.get_origin(annotation)
         if origin is Annotated:
             annotation, *more = typing.get_args(annotation)
             for one in more:
                 constraints += getattr(one, "metadata", [one])
+                unit = getattr(one, "description", None) or unit
         elif origin in (typing.Union, types.UnionType):
             annotation = next(kind for kind in typing.get_args(annotation) if kind is not type(None))
         else:
-            return annotation, constraints
+            return annotation, constraints, unit
 
 
 def _range(constraints: list[Any]) -> str:
@@ -137,9 +138,10 @@ def _figure(value: Any) -> str:
     return str(int(value)) if value == int(value) and abs(value) < 1e7 else f"{value:g}"
 
 
-def _allowed(annotation: Any, metadata: Iterable[Any] = ()) -> str:
+def _allowed(annotation: Any, metadata: Iterable[Any] = (), unit: str | None = "") -> str:
     """What a key accepts, in words made from the very constraints that are enforced."""
-    kind, constraints = _peel(annotation, metadata)
+    kind, constraints, inner_unit = _peel(annotation, metadata)
+    unit = f" ({unit or inner_unit})" if unit or inner_unit else ""
     limits = _range(constraints)
     even = any(isinstance(c, MultipleOf) and c.multiple_of == 2 for c in constraints)
     if typing.get_origin(kind) is Literal:
@@ -147,16 +149,15 @@ def _allowed(annotation: Any, metadata: Iterable[Any] = ()) -> str:
         return f"{', '.join(choices[:-1])} or {choices[-1]}"
     if typing.get_origin(kind) is tuple:
         each = [_allowed(part) for part in typing.get_args(kind)]
-        if len(set(each)) == 1:
-            return f"a list of {len(each)}, each {each[0]}"
-        return f"a list of {len(each)}: {', '.join(each)}"
+        listed = f", each {each[0]}" if len(set(each)) == 1 else f": {', '.join(each)}"
+        return f"a list of {len(each)}{listed}{unit}"
     if kind is bool:
         return "true or false"
     if kind is Path:
         return "a path as text"
     if kind is str:
         return "text of one line, 1 to 200 characters"
-    return f"{'an even whole' if even else 'a whole' if kind is int else 'a'} number {limits}".strip()
+    return f"{'an even whole' if even else 'a whole' if kind is int else 'a'} number {limits}{unit}".strip()
 
 
 def _shown(value: Any) -> str:
@@ -321,7 +322,9 @@ class Spin:
     period_h: Annotated[Number, Field(ge=1e-6, le=1e6, description="hours")]
     obliquity_deg: Annotated[Number, Field(ge=0.0, le=180.0, description="degrees")] | None = None
     pole_azimuth_deg: Annotated[Angle, Field(description="degrees")] | None = None
-    pole_ecliptic_deg: tuple[Angle, Annotated[Number, Field(ge=-90.0, le=90.0)]] | None = None
+    pole_ecliptic_deg: (
+        Annotated[tuple[Angle, Annotated[Number, Field(ge=-90.0, le=90.0)]], Field(description="degrees")] | None
+    ) = None
 
     @staticmethod
     def clashes(given: set[str]) -> Iterator[_Clash]:
@@ -559,7 +562,7 @@ def _suggest(section: str, key: str) -> tuple[str, str]:
     else:
         near = difflib.get_close_matches(key, ["name", *_SECTIONS], n=1, cutoff=0.6)
         if near:
-            return near[0], f"did you mean {near[0]}?"
+            return near[0], f"did you mean {near[0] if near[0] == 'name' else f'[{near[0]}]'}?"
     near = difflib.get_close_matches(key, everything.values(), n=1, cutoff=0.7)
     if near:
         dotted = next(d for d, k in everything.items() if k == near[0])
@@ -579,9 +582,8 @@ def _unknown(section: str, key: str, value: Any) -> tuple[str, str]:
 def _wrong(section: str, key: str, value: Any) -> str:
     """What is wrong with the value of a known key."""
     info = _keys(_SECTIONS[section])[key] if section else _keys(Body)[key]
-    allowed = _allowed(info.annotation, info.metadata)
-    unit = info.description or _unit(info.annotation)
-    must = f"{section + '.' if section else ''}{key} = {_shown(value)} must be {allowed}{f' ({unit})' if unit else ''}"
+    allowed = _allowed(info.annotation, info.metadata, info.description)
+    must = f"{section + '.' if section else ''}{key} = {_shown(value)} must be {allowed}"
     if (section, key) == ("orbit", "e") and isinstance(value, (int, float)) and not isinstance(value, bool):
         if value >= 1:
             return f"{must}: an open orbit has no mean rate"
@@ -590,22 +592,14 @@ def _wrong(section: str, key: str, value: Any) -> str:
     return must
 
 
-def _unit(annotation: Any) -> str:
-    for part in typing.get_args(annotation):
-        for one in typing.get_args(part)[1:] if typing.get_origin(part) is Annotated else ():
-            if getattr(one, "description", None):
-                return str(one.description)
-    return ""
-
-
 def _missing(section: str, key: str) -> str:
     if not section and key in _SECTIONS:
         needed = [k for k, info in _keys(_SECTIONS[key]).items() if info.is_required()]
-        return f"section [{key}] is missing{': it needs ' + ', '.join(needed) if needed else ''}"
+        needed += [message.partition(": give ")[2] for _, message in _SECTIONS[key].clashes(set())]
+        return f"section [{key}] is missing: it needs {', '.join(needed)}"
     info = _keys(_SECTIONS[section])[key] if section else _keys(Body)[key]
-    unit = info.description or _unit(info.annotation)
-    dotted = f"{section + '.' if section else ''}{key}"
-    return f"{dotted} is missing: {_allowed(info.annotation, info.metadata)}{f' ({unit})' if unit else ''}"
+    allowed = _allowed(info.annotation, info.metadata, info.description)
+    return f"{section + '.' if section else ''}{key} is missing: {allowed}"
 
 
 def _faults(error: ValidationError, table: Mapping[str, Any], section: str = "") -> list[_Fault]:
@@ -619,7 +613,7 @@ def _faults(error: ValidationError, table: Mapping[str, Any], section: str = "")
         place, key = (where[0], where[1]) if len(where) > 1 else ("", where[0])
         if where[0] in _SECTIONS and len(where) == 1 and found["type"] == "clash":
             for one, message in found["ctx"]["clashes"]:
-                other[f"{key}.{one or '?'}"] = (f"{key}.{one}" if one else key, f"in [{key}], {message}")
+                other[f"{key}: {message}"] = (f"{key}.{one}" if one else key, f"in [{key}], {message}")
             continue
         dotted = f"{place}.{key}" if place else key
         if place:
@@ -641,9 +635,7 @@ def _faults(error: ValidationError, table: Mapping[str, Any], section: str = "")
         if isinstance(given, Mapping):
             hinted = {k[5 + len(place) + 1 :] for k in missing if k.startswith(f"near {place}.")}
             for key, message in _SECTIONS[place].clashes({k for k, v in given.items() if v is not None} | hinted):
-                other.setdefault(
-                    f"{place}.{key or '?'}", (f"{place}.{key}" if key else place, f"in [{place}], {message}")
-                )
+                other[f"{place}: {message}"] = (f"{place}.{key}" if key else place, f"in [{place}], {message}")
     near = {k[5:] for k in missing if k.startswith("near ")}
     kept = [fault for dotted, fault in missing.items() if not dotted.startswith("near ") and dotted not in near]
     return [*unknown.values(), *kept, *other.values()]
@@ -654,7 +646,7 @@ def _as_error(faults: list[_Fault], where: Callable[[str], str] = lambda key: ""
     lines = sorted((where(key) + message for key, message in faults), key=_line_number)
     if len(lines) > MOST_FAULTS:
         lines = [*lines[:MOST_FAULTS], f"and {len(lines) - MOST_FAULTS} more faults"]
-    short = [lines[0], *(line.removeprefix(f"{shown}, ") for line in lines[1:])]
+    short = [lines[0], *(line.removeprefix(f"{shown}, ").removeprefix(f"{shown}: ") for line in lines[1:])]
     return BodyError("; ".join(short), lines=lines, keys=[key for key, _ in faults])
 
 
@@ -702,11 +694,13 @@ def _parse(text: str, shown: str) -> dict[str, Any]:
         line = re.match(r"line (\d+)", place)
         number = line[1] if line else str(text.rstrip().count("\n") + 1)
         what = what if at else str(error)
+        what += " (text stands in quotes)" if what == "Invalid value" else ""
         raise BodyError(f"{shown}, line {number}: not valid TOML: {_one_line(what)}") from None
     except RecursionError:
         raise BodyError(f"{shown}: not valid TOML: brackets nested too deep") from None
-    except ValueError as error:  # what tomllib lets through of int(), float() and datetime
-        raise BodyError(f"{shown}: not valid TOML: {_one_line(str(error))}") from None
+    except ValueError as error:  # from int() and datetime, which tomllib lets through
+        reason = "a number of thousands of digits" if "digits" in str(error) else _one_line(str(error))
+        raise BodyError(f"{shown}: not valid TOML: {reason}") from None
 
 
 def _one_line(text: str) -> str:
