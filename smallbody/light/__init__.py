@@ -1,1 +1,34 @@
+"""Light: who sees the Sun, and what sunlight reaches the facets."""
 
+from smallbody.light.horizons import Horizons, horizons_of, no_shadows
+from smallbody.light.sun import (
+    Places,
+    SunOnBody,
+    eccentric_anomaly,
+    places_at,
+    places_between,
+    places_in_true_anomaly,
+    pole_vector,
+    sun_on_body,
+    true_anomaly,
+)
+from smallbody.light.sunlight import LightSums, light_sums, lit_cosines, lit_latitudes
+
+__all__ = [
+    "Horizons",
+    "LightSums",
+    "Places",
+    "SunOnBody",
+    "eccentric_anomaly",
+    "horizons_of",
+    "light_sums",
+    "lit_cosines",
+    "lit_latitudes",
+    "no_shadows",
+    "places_at",
+    "places_between",
+    "places_in_true_anomaly",
+    "pole_vector",
+    "sun_on_body",
+    "true_anomaly",
+]

@@ -1,0 +1,549 @@
+"""From a body to its mean rates of orbit and spin: the main road through body, shape, light, heat and push."""
+
+from __future__ import annotations
+
+import time
+import warnings
+from collections.abc import Mapping
+from dataclasses import dataclass
+from importlib.metadata import PackageNotFoundError, version
+
+import numpy as np
+
+from smallbody.body import Body
+from smallbody.constants import AU_M, C_M_S, DAY_S, GM_SUN, MYR_S
+from smallbody.errors import Note, SizeMismatch
+from smallbody.heat import Ground, LagSolver
+from smallbody.light import (
+    Horizons,
+    Places,
+    SunOnBody,
+    horizons_of,
+    light_sums,
+    no_shadows,
+    places_between,
+    places_in_true_anomaly,
+    pole_vector,
+    sun_on_body,
+)
+from smallbody.push.gauss import ORBIT_UNITS, SPIN_UNITS, element_rates, mean_coefficients, spin_rates
+from smallbody.push.recoil import HeatRun, Push, push_of_heat, push_of_light
+from smallbody.push.result import SOURCES, Acceleration, Checks, Drift, OrbitRates, Rate, SourceRates, SpinRates
+from smallbody.push.sphere import SphereDrift, sphere_drift
+from smallbody.quantity import Quantity
+from smallbody.shape import Shape, prepare_shape
+from smallbody.workers import SILENT, Meter
+
+SLOW_ROTATIONS = 50.0  # fewer in an orbit: rotation and orbit are one long period
+MOST_ASCENSION = 0.25  # the Sun's motion in longitude is not taken to change the rotation rate by more than this
+WORTH_SAYING = 0.02  # relative numerical error beyond which the output says what to raise
+SMALL_DRIFT = 1e-3  # of the natural scale: a drift smaller than this is judged against the scale
+SMALL_SPIN = 2e-4
+
+
+@dataclass(frozen=True)
+class _World:
+    """Body, shape and pole, ready to be asked at any fineness."""
+
+    body: Body
+    shape: Shape
+    mass_kg: float
+    moment: float  # about the spin axis, kg m2
+    omega: float
+    pole_axes: np.ndarray  # rows: pole, towards increasing obliquity, towards increasing azimuth; orbit frame
+    ground: Ground
+
+    def sun(self, places: Places) -> SunOnBody:
+        return sun_on_body(places, self.body.obliquity, self.body.pole_azimuth)
+
+
+def _world(body: Body, shape: Shape) -> _World:
+    mass = shape.mass
+    density = (
+        body.bulk.density_kg_m3 if body.bulk.density_kg_m3 is not None else (body.bulk.mass_kg or 0.0) / mass.volume_m3
+    )
+    tilt, turn = body.obliquity, body.pole_azimuth
+    axes = np.array(
+        [
+            pole_vector(tilt, turn),
+            [np.cos(tilt) * np.cos(turn), np.cos(tilt) * np.sin(turn), -np.sin(tilt)],
+            [-np.sin(turn), np.cos(turn), 0.0],
+        ]
+    )
+    return _World(
+        body=body,
+        shape=shape,
+        mass_kg=density * mass.volume_m3,
+        moment=density * float(mass.inertia_m5[2, 2]),
+        omega=body.spin.rate,
+        pole_axes=axes,
+        ground=Ground(body.surface.emissivity, body.surface.thermal_inertia),
+    )
+
+
+def default_places(e: float) -> int:
+    """Places of the orbit at which heat is solved, unless asked otherwise: more on eccentric orbits."""
+    return 24 if e < 0.3 else 32 if e < 0.6 else 48 if e < 0.8 else 96
+
+
+def default_light_places(e: float) -> int:
+    """Places of the orbit at which light is summed, unless asked otherwise."""
+    return 192 if e < 0.6 else 384
+
+
+def _radial_frame(places: Places) -> np.ndarray:
+    """(p, 3, 3) rows radial, transverse, normal, in the orbit frame."""
+    normal = np.broadcast_to([0.0, 0.0, 1.0], places.to_sun.shape)
+    radial = -places.to_sun
+    return np.stack([radial, np.cross(normal, radial), normal], axis=1)
+
+
+@dataclass(frozen=True)
+class _Seen:
+    """Pushes resolved along (radial, transverse, normal) and (spin, obliquity, azimuth) at places."""
+
+    places: Places
+    force: np.ndarray  # (p, 3) N
+    torque: np.ndarray  # (p, 3) N m
+
+    def rates(self, world: _World) -> dict[str, float]:
+        orbit = world.body.orbit
+        rates = element_rates(
+            self.places, self.force / world.mass_kg, np.radians(orbit.i_deg), np.radians(orbit.peri_deg)
+        )
+        mean_torque = self.places.weight @ self.torque
+        return rates | spin_rates(mean_torque, world.moment, world.omega, world.body.obliquity)
+
+    def coefficients(self, world: _World) -> np.ndarray:
+        return np.array(mean_coefficients(self.places, self.force / world.mass_kg))
+
+
+def _resolve(push: Push, places: Places, world: _World) -> _Seen:
+    return _Seen(
+        places, np.einsum("pkx,px->pk", _radial_frame(places), push.force), push.torque @ world.pole_axes.T
+    )  # fmt: skip
+
+
+@dataclass(frozen=True)
+class _Light:
+    """Light summed at places: what it pushes, and what it left behind."""
+
+    seen: Mapping[str, _Seen]  # absorbed, scattered, direct
+    absorbed_w: float  # mean over the orbit, whole surface
+    across_m2: float  # mean lit cross-section
+    mean_absorbed_w_m2: np.ndarray  # (f,)
+
+
+def _light(world: _World, horizons: Horizons, count: int, meter: Meter) -> _Light:
+    orbit = world.body.orbit
+    places = places_in_true_anomaly(orbit.a_au * AU_M, orbit.e, count)
+    sun = world.sun(places)
+    # light received goes as 1/r^2: these weights make the mean cosine that of the light, not of the time
+    light = places.weight * places.flux_w_m2
+    sums = light_sums(world.shape, horizons, sun, light / light.sum(), meter=meter)
+    albedo = world.body.surface.bond_albedo
+    pushes = push_of_light(sums, places, sun, albedo)
+    absorbed = (1 - albedo) * light.sum() * sums.mean_cosine
+    return _Light(
+        seen={k: _resolve(v, places, world) for k, v in pushes.items()},
+        absorbed_w=float(absorbed @ world.shape.areas_m2),
+        across_m2=float(places.weight @ sums.across),
+        mean_absorbed_w_m2=absorbed,
+    )
+
+
+def _heat(
+    world: _World, horizons: Horizons, count: int, meter: Meter, shown: int | None = None
+) -> tuple[_Seen, HeatRun]:
+    orbit = world.body.orbit
+    places = places_between(orbit.a_au * AU_M, orbit.e, count)
+    sun = world.sun(places)
+    most = MOST_ASCENSION * world.omega
+    rates = world.omega - np.clip(sun.ascension_rate, -most, most)
+    solver = LagSolver(world.ground, places, horizons.columns, rates)
+    run = push_of_heat(
+        world.shape, horizons, solver, sun, world.body.surface.bond_albedo, shown=shown, meter=meter
+    )  # fmt: skip
+    return _resolve(run.push, places, world), run
+
+
+Table = dict[str, dict[str, float]]  # source or "total" -> rate -> value
+
+
+def _rates(world: _World, light: _Light, lag: _Seen) -> tuple[Table, np.ndarray]:
+    """All rates by source and in total; and the mean coefficients A1, A2, A3."""
+    parts = {k: s.rates(world) for k, s in light.seen.items()}
+    late = lag.rates(world)
+    out: Table = {
+        "thermal": {k: parts["absorbed"][k] + late[k] for k in late},
+        "scattered": parts["scattered"],
+        "direct": parts["direct"],
+    }
+    out["total"] = {k: sum(out[s][k] for s in SOURCES) for k in late}
+    coefficients = sum((s.coefficients(world) for s in light.seen.values()), lag.coefficients(world))
+    return out, np.asarray(coefficients)
+
+
+# How much of the change from a coarser repeat is taken for the error of the finer run. A second-order method leaves a
+# third of it; shadow edges converge like noise and leave more. tests/bench/bench_errors.py measures what is left.
+LEFT_OF = {"rotation_nodes": 0.5, "orbit_places": 0.5, "lit_samples": 0.5}
+
+
+def _errors(fine: Table, coarser: Mapping[str, Table]) -> tuple[Table, dict[str, Table]]:
+    """Numerical errors of all rates, and what each coarser repeat contributes."""
+    by_cause = {
+        cause: {s: {k: LEFT_OF[cause] * abs(fine[s][k] - table[s][k]) for k in fine[s]} for s in fine}
+        for cause, table in coarser.items()
+    }
+    total = {s: {k: float(np.sqrt(sum(t[s][k] ** 2 for t in by_cause.values()))) for k in fine[s]} for s in fine}
+    return total, by_cause
+
+
+def drift(body: Body, *, shape: Shape | None = None, horizons: Horizons | None = None, meter: Meter = SILENT) -> Drift:
+    """Mean rates at which sunlight changes the orbit and spin of a body, by source, each with its numerical error.
+
+    body : Body
+    shape : Shape already prepared (centre of mass at the origin, z the spin axis); else it is made from body.shape
+    horizons : of that shape, with body.solver.rotation_nodes meridians; else they are tabulated
+    meter : told of progress
+    returns : Drift
+    raises : ShapeError; SizeMismatch, if horizons do not fit; NotSettled
+    source : pressure of light and Lambert recoil; 1-D heat conduction below each facet; Gauss's equations; rotation about a
+        principal axis. Heat radiated by one facet onto another is not followed.
+    """
+    with warnings.catch_warnings(record=True) as caught:
+        warnings.simplefilter("always", Note)
+        result = _drift(body, shape, horizons, meter)
+    for w in caught:
+        warnings.warn_explicit(w.message, w.category, w.filename, w.lineno)
+    said = tuple(str(w.message) for w in caught if issubclass(w.category, Note))
+    return _with_notes(result, said)
+
+
+def _with_notes(result: Drift, said: tuple[str, ...]) -> Drift:
+    from dataclasses import replace
+
+    return replace(result, notes=said + result.notes)
+
+
+def _drift(body: Body, shape: Shape | None, horizons: Horizons | None, meter: Meter) -> Drift:
+    clock = _Clock()
+    solver = body.solver
+    if shape is None:
+        shape = prepare_shape(body.shape)
+    world = _world(body, shape)
+    clock.lap("shape")
+    nodes = solver.rotation_nodes
+    if not solver.shadows:
+        horizons = no_shadows(shape, nodes)
+    elif horizons is None:
+        horizons = horizons_of(shape, nodes, solver.lit_samples, meter=meter)
+    elif horizons.columns != nodes or len(horizons.rows) != len(shape.facets):
+        raise SizeMismatch(
+            f"horizons of {len(horizons.rows)} facets and {horizons.columns} meridians for a shape of "
+            f"{len(shape.facets)} facets and {nodes} rotation nodes"
+        )
+    clock.lap("horizons")
+    e = body.orbit.e
+    heat_places = solver.orbit_places or default_places(e)
+    light_places = solver.light_places or default_light_places(e)
+
+    light = _light(world, horizons, light_places, meter)
+    clock.lap("light")
+    lag, run = _heat(world, horizons, heat_places, meter, shown=0)
+    clock.lap("heat")
+    fine, coefficients = _rates(world, light, lag)
+
+    thin = horizons.thinned() if solver.shadows else no_shadows(shape, nodes // 2)
+    light_thin = _light(world, thin, light_places, meter)
+    lag_thin, _ = _heat(world, thin, heat_places, meter)
+    fewer, coefficients_thin = _rates(world, light_thin, lag_thin)
+    light_half = _light(world, horizons, light_places // 2, meter)
+    lag_half, _ = _heat(world, horizons, heat_places // 2, meter)
+    sparser, coefficients_half = _rates(world, light_half, lag_half)
+    coarser = {"rotation_nodes": fewer, "orbit_places": sparser}
+    spread = [coefficients_thin - coefficients, coefficients_half - coefficients]
+    if len(horizons.shifts) > 1 and horizons.overshadowed.any():
+        light_centre = _light(world, horizons.at_centroids(), light_places, meter)
+        coarser["lit_samples"], other = _rates(world, light_centre, lag)
+        spread.append(other - coefficients)
+    errors, by_cause = _errors(fine, coarser)
+    clock.lap("coarser repeats")
+
+    halved: dict[str, float] = {}
+    if solver.halved_shape:
+        halved = _halved(world, nodes // 2, heat_places, light_places, fewer["total"], meter)
+        clock.lap("halved shape")
+
+    scale = _spin_scale(world)
+    checks = Checks(
+        energy_balance=_balance(run, lag.places, light),
+        facets=len(shape.facets),
+        overshadowed_fraction=horizons.overshadowed_fraction,
+        rotations_per_orbit=body.rotations_per_orbit,
+        direct_spin_residual=fine["direct"]["domega_dt_rad_per_d2"] / scale,
+        spin_scale_rad_per_d2=scale,
+        sphere_da_dt_au_per_myr=(line := _sphere(world)).da_dt_au_per_myr,
+        halved_shape=halved,
+    )
+    a1, a2, a3 = (float(x) for x in coefficients)
+    left = 0.5 * np.sqrt(np.sum(np.square(spread), axis=0))
+    acceleration = Acceleration(
+        a1_au_per_d2=a1,
+        a2_au_per_d2=a2,
+        a3_au_per_d2=a3,
+        area_to_mass_m2_per_kg=light.across_m2 / world.mass_kg,
+        beta=a1 * AU_M**3 / DAY_S**2 / GM_SUN,
+        numerical_error=dict(zip(("a1_au_per_d2", "a2_au_per_d2", "a3_au_per_d2"), map(float, left))),
+    )
+    by_source = {s: _source_rates(world, fine[s], errors[s]) for s in SOURCES}
+    total = _source_rates(world, fine["total"], errors["total"])
+    return Drift(
+        name=body.name,
+        orbit=total.orbit,
+        spin=total.spin,
+        by_source=by_source,
+        acceleration=acceleration,
+        checks=checks,
+        provenance={
+            "body": body.to_dict(),
+            "shape_sha256": shape.sha256,
+            "solver": {
+                "method": solver.method,
+                "rotation_nodes": nodes,
+                "orbit_places": heat_places,
+                "light_places": light_places,
+                "lit_samples": len(horizons.shifts),
+                "shadows": solver.shadows,
+            },
+            "mass_kg": world.mass_kg,
+            "diameter_km": shape.diameter_m / 1000,
+            "moment_of_inertia_kg_m2": world.moment,
+            "versions": versions(),
+            "seconds": clock.laps,
+        },
+        sphere=line,
+        notes=tuple(_advice(world, fine["total"], by_cause, errors["total"], halved)),
+        arrays=_arrays(world, horizons, light, lag, run, fine, errors),
+    )
+
+
+class _Clock:
+    """Seconds spent, by task."""
+
+    def __init__(self) -> None:
+        self.laps: dict[str, float] = {}
+        self._last = time.perf_counter()
+
+    def lap(self, task: str) -> None:
+        now = time.perf_counter()
+        self.laps[task] = round(now - self._last, 3)
+        self._last = now
+
+
+def versions() -> dict[str, str]:
+    """Versions of what computed the result."""
+    found = {}
+    for name in ("smallbody", "numpy", "scipy", "numba"):
+        try:
+            found[name] = version(name)
+        except PackageNotFoundError:  # run from a folder that was never installed
+            found[name] = "unknown"
+    return found
+
+
+def _spin_scale(world: _World) -> float:
+    """Natural scale of spin rates, rad/d2: mean sunlight/c times (diameter/2)^3 over the moment of inertia."""
+    orbit = world.body.orbit
+    places = places_in_true_anomaly(orbit.a_au * AU_M, orbit.e, 8)
+    flux = float(places.weight @ places.flux_w_m2)
+    return flux / C_M_S * (world.shape.diameter_m / 2) ** 3 / world.moment * DAY_S**2
+
+
+def _balance(run: HeatRun, places: Places, light: _Light) -> float:
+    return float(places.weight @ run.excess_w) / light.absorbed_w if light.absorbed_w else 0.0
+
+
+def _sphere(world: _World) -> SphereDrift:
+    b = world.body
+    volume = world.shape.mass.volume_m3
+    return sphere_drift(
+        radius_m=world.shape.diameter_m / 2,
+        density_kg_m3=world.mass_kg / volume,
+        bond_albedo=b.surface.bond_albedo,
+        emissivity=b.surface.emissivity,
+        thermal_inertia=b.surface.thermal_inertia,
+        period_h=b.spin.period_h,
+        obliquity_deg=float(np.degrees(b.obliquity)),
+        a_au=b.orbit.a_au,
+        e=b.orbit.e,
+    )
+
+
+def _halved(
+    world: _World, nodes: int, heat_places: int, light_places: int, full: Mapping[str, float], meter: Meter
+) -> dict[str, float]:
+    """How far each rate moves when the shape has half the facets, all else equal (at half the rotation nodes)."""
+    half = world.shape.halved()
+    if world.body.shape.diameter_km is not None:
+        half = half.scaled(world.shape.diameter_m / half.diameter_m)
+    half = half.moved(-half.mass.centre_m)
+    other = _world(world.body, half)
+    solver = world.body.solver
+    horizons = horizons_of(half, nodes, solver.lit_samples, meter=meter) if solver.shadows else no_shadows(half, nodes)
+    lag, _ = _heat(other, horizons, heat_places, meter)
+    rates, _ = _rates(other, _light(other, horizons, light_places, meter), lag)
+    return {k: abs(rates["total"][k] - full[k]) for k in full}
+
+
+def _source_rates(world: _World, values: Mapping[str, float], errors: Mapping[str, float]) -> SourceRates:
+    def rate(key: str) -> Rate:
+        return Rate(float(values[key]), float(errors[key]))
+
+    spin_up = rate("domega_dt_rad_per_d2")
+    if spin_up.value:
+        years = world.omega / (abs(spin_up.value) / DAY_S**2) / MYR_S
+        doubling = Rate(years, years * spin_up.relative_error)
+    else:
+        doubling = Rate(np.inf, np.inf)
+    return SourceRates(
+        OrbitRates(**{k: rate(k) for k in ORBIT_UNITS}),
+        SpinRates(**{k: rate(k) for k in SPIN_UNITS}, doubling_time_myr=doubling),
+    )
+
+
+def _advice(
+    world: _World,
+    values: Mapping[str, float],
+    by_cause: Mapping[str, Table],
+    errors: Mapping[str, float],
+    halved: Mapping[str, float],
+) -> list[str]:
+    """What to raise where a numerical error exceeds two per cent, and whether a denser shape would matter."""
+    orbit = world.body.orbit
+    spin_floor = SMALL_SPIN * _spin_scale(world)
+    pressure = 3 * _spin_scale(world) / DAY_S**2 * world.moment / ((world.shape.diameter_m / 2) ** 3)
+    accel = pressure * np.pi * (world.shape.diameter_m / 2) ** 2 / world.mass_kg
+    n = np.sqrt(GM_SUN / (orbit.a_au * AU_M) ** 3)
+    to_deg = DAY_S**-2 / world.omega * np.degrees(1) * MYR_S
+    floors = {
+        "da_dt_au_per_myr": SMALL_DRIFT * 2 * accel / n / AU_M * MYR_S,
+        "domega_dt_rad_per_d2": spin_floor,
+        "dobliquity_dt_deg_per_myr": spin_floor * to_deg,
+    }
+    said = []
+    for key, floor in floors.items():
+        size = max(abs(values[key]), floor)
+        if errors[key] > WORTH_SAYING * size:
+            cause = max(by_cause, key=lambda c: by_cause[c]["total"][key])
+            also = " and solver.light_places" if cause == "orbit_places" else ""
+            said.append(
+                f"{key}: numerical error is {100 * errors[key] / size:.1f} %, most of it from solver.{cause}; "
+                f"raise solver.{cause}{also}"
+            )
+    for key, floor in floors.items():
+        size = max(abs(values[key]), floor)
+        if halved and halved[key] > WORTH_SAYING * size:
+            said.append(
+                f"{key}: with half the facets it moves by {100 * halved[key] / size:.1f} %; a denser shape would matter"
+            )
+    return said
+
+
+def _arrays(
+    world: _World, horizons: Horizons, light: _Light, lag: _Seen, run: HeatRun, fine: Table, errors: Table
+) -> dict[str, Quantity]:
+    shape = world.shape
+    places = light.seen["direct"].places
+    sun = world.sun(places)
+    n = horizons.columns
+    from smallbody.light import lit_cosines
+
+    first = lag.places
+    one = SunOnBody(*(x[:1] for x in _sun_fields(world.sun(first))))
+    absorbed = np.empty((len(shape.facets), n), np.float32)
+    strength = first.flux_w_m2[0] * (1 - world.body.surface.bond_albedo)
+    for start in range(0, len(shape.facets), 4096):
+        facets = np.arange(start, min(start + 4096, len(shape.facets)))
+        absorbed[facets] = (lit_cosines(shape, horizons, one, facets)[0] * strength).T
+    # the delay of the heat is solved at fewer places: its push is carried to the light's places by a periodic spline
+    late = _between(lag, places)
+    force = {
+        "thermal": light.seen["absorbed"].force + late[0],
+        "scattered": light.seen["scattered"].force,
+        "direct": light.seen["direct"].force,
+    }
+    torque = {
+        "thermal": light.seen["absorbed"].torque + late[1],
+        "scattered": light.seen["scattered"].torque,
+        "direct": light.seen["direct"].torque,
+    }
+    names = list(fine["total"])
+    sources = ("total", *SOURCES)
+
+    def text(values: tuple[str, ...] | list[str], dim: str, about: str) -> Quantity:
+        return Quantity(np.array(values, dtype=object), (dim,), "", about)
+
+    def table(of: Table) -> np.ndarray:
+        return np.array([[of[s][k] for k in names] for s in sources])
+
+    return {
+        "source": text(SOURCES, "source", "cause of the push"),
+        "source_total": text(sources, "source_total", "cause of the rate, or all together"),
+        "rate": text(names, "rate", "name of the rate; it ends in its unit"),
+        "orbit_axis": text(("radial", "transverse", "normal"), "orbit_axis", "direction in the orbit"),
+        "pole_axis": text(("spin", "obliquity", "azimuth"), "pole_axis", "along the pole, towards larger angles of it"),
+        "rate_value": Quantity(table(fine), ("source_total", "rate"), "1", "mean rates, units in their names"),
+        "rate_error": Quantity(table(errors), ("source_total", "rate"), "1", "numerical errors of the rates"),
+        "vertex_m": Quantity(shape.vertices_m, ("vertex", "axis"), "m", "corners, z is the spin axis"),
+        "facet_vertex": Quantity(shape.facets.astype(np.int32), ("facet", "corner"), "1", "corners of each facet"),
+        "facet_area_m2": Quantity(shape.areas_m2, ("facet",), "m2", "area"),
+        "facet_overshadowed": Quantity(
+            horizons.overshadowed.astype(np.int8), ("facet",), "1", "something rises over the facet's own plane"
+        ),
+        "subsolar_longitude_deg": Quantity(
+            -360.0 * np.arange(n) / n, ("rotation",), "deg", "body longitude of the Sun, in the order of time"
+        ),
+        "facet_absorbed_w_m2": Quantity(absorbed, ("facet", "rotation"), "W/m2", "absorbed sunlight at perihelion"),
+        "facet_temperature_k": Quantity(
+            run.temperature_k, ("facet", "rotation"), "K", "surface temperature at perihelion"
+        ),
+        "facet_mean_absorbed_w_m2": Quantity(
+            light.mean_absorbed_w_m2, ("facet",), "W/m2", "absorbed sunlight, mean over the orbit"
+        ),
+        "facet_mean_temperature_k": Quantity(
+            run.mean_temperature_k, ("facet", "heat_place"), "K", "surface temperature, mean over a rotation"
+        ),
+        "heat_place_mean_anomaly_deg": Quantity(
+            np.degrees(first.mean_anomaly), ("heat_place",), "deg", "where heat was solved"
+        ),
+        "place_mean_anomaly_deg": Quantity(np.degrees(places.mean_anomaly), ("place",), "deg", "where light was summed"),
+        "place_true_anomaly_deg": Quantity(np.degrees(places.true_anomaly), ("place",), "deg", "true anomaly"),
+        "place_sun_distance_au": Quantity(places.distance_m / AU_M, ("place",), "au", "distance from the Sun"),
+        "place_subsolar_latitude_deg": Quantity(
+            np.degrees(np.arcsin(sun.sin_latitude)), ("place",), "deg", "body latitude of the Sun"
+        ),
+        "place_weight": Quantity(places.weight, ("place",), "1", "share of the orbital period"),
+        "force_n": Quantity(
+            np.stack([force[s] for s in SOURCES]), ("source", "place", "orbit_axis"), "N", "force, mean over a rotation"
+        ),
+        "torque_n_m": Quantity(
+            np.stack([torque[s] for s in SOURCES]), ("source", "place", "pole_axis"), "N m", "torque, mean over a rotation"
+        ),
+    }  # fmt: skip
+
+
+def _sun_fields(sun: SunOnBody) -> tuple[np.ndarray, ...]:
+    return sun.sin_latitude, sun.cos_latitude, sun.axes, sun.ascension_rate
+
+
+def _between(lag: _Seen, places: Places) -> tuple[np.ndarray, np.ndarray]:
+    from scipy.interpolate import CubicSpline
+
+    m = np.append(lag.places.mean_anomaly, lag.places.mean_anomaly[0] + 2 * np.pi)
+
+    def carry(x: np.ndarray) -> np.ndarray:
+        spline = CubicSpline(m, np.concatenate([x, x[:1]]), bc_type="periodic")
+        return np.asarray(spline(m[0] + np.mod(places.mean_anomaly - m[0], 2 * np.pi)))
+
+    return carry(lag.force), carry(lag.torque)
