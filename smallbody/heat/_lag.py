@@ -12,11 +12,12 @@ from __future__ import annotations
 
 import math
 
+import numpy as np
 from numba import njit
 
 FAST = {"contract", "arcp", "nsz"}  # NaN stays NaN, sums keep their order
-FIRST_NEWTON = 12  # Newton steps for a node that has no guess yet
 MEAN_NEWTON = 4
+SEASON_NEWTON = 8
 
 
 @njit(cache=True, nogil=True, fastmath=FAST)
@@ -83,25 +84,57 @@ def _sweep(t, absorbed, weights, lanes, nodes, es, sink, first, row, moved):
             for l in range(lanes):
                 row[l] -= weights[base + i] * t[i, l]
             i += 1
-        if first:
-            for l in range(lanes):
-                c = max(row[l], 0.0)
-                x = math.sqrt(math.sqrt(c / es))  # not below the root, so Newton's steps come down to it
-                for _ in range(FIRST_NEWTON):
-                    x3 = x * x * x
-                    x = (3.0 * es * x3 * x + c) / (4.0 * es * x3 + w0 + 1e-300)
-                moved[l] = max(moved[l], abs(x - t[j, l]))
-                t[j, l] = x
-        else:
-            for l in range(lanes):
-                c = max(row[l], 0.0)
-                x = t[j, l]
-                x3 = x * x * x
-                y = (3.0 * es * x3 * x + c) / (4.0 * es * x3 + w0 + 1e-300)
+        for l in range(lanes):
+            c = max(row[l], 0.0)
+            x = t[j, l]
+            x3 = x * x * x
+            y = (3.0 * es * x3 * x + c) / (4.0 * es * x3 + w0 + 1e-300)
+            if first:  # a guess far below the root is thrown far above it, but the root is not above this
+                y = min(y, math.sqrt(math.sqrt(c / es)))
                 x3 = y * y * y
                 y = (3.0 * es * x3 * y + c) / (4.0 * es * x3 + w0 + 1e-300)
-                moved[l] = max(moved[l], abs(y - x))
-                t[j, l] = y
+            moved[l] = max(moved[l], abs(y - x))
+            t[j, l] = y
+
+
+@njit(cache=True, nogil=True, fastmath=FAST)
+def _balance_season(means, m3, residual, season, es, gamma, matrix, step):
+    """One Newton step for the daily means of one lane, all places at once; step (p,): out, K.
+
+    (4 es <T^3>[p] + gamma b) step = residual, residual (p,) = absorbed - emitted - conducted.
+    """
+    p_count = means.shape[0]
+    for p in range(p_count):
+        for q in range(p_count):
+            matrix[p, q] = gamma * season[p, q]
+        matrix[p, p] += 4.0 * es * m3[p] + 1e-12
+    step[:] = np.linalg.solve(matrix, residual)
+    for p in range(p_count):
+        step[p] = max(step[p], -0.5 * means[p])
+
+
+@njit(cache=True, nogil=True, fastmath=FAST)
+def _first_means(absorbed_mean, season, es, gamma, means, matrix, step):
+    """Daily means were the ground at one temperature all day: es T^4 + gamma b T = absorbed, (p,) for one lane."""
+    p_count = means.shape[0]
+    total = 0.0
+    for p in range(p_count):
+        total += absorbed_mean[p] / p_count
+    start = math.sqrt(math.sqrt(total / es)) + 1e-3
+    residual = np.empty(p_count)
+    m3 = np.empty(p_count)
+    for p in range(p_count):
+        means[p] = start
+    for _ in range(SEASON_NEWTON):
+        for p in range(p_count):
+            flow = 0.0
+            for q in range(p_count):
+                flow += season[p, q] * means[q]
+            m3[p] = means[p] ** 3
+            residual[p] = absorbed_mean[p] - es * means[p] ** 4 - gamma * flow
+        _balance_season(means, m3, residual, season, es, gamma, matrix, step)
+        for p in range(p_count):
+            means[p] += step[p]
 
 
 @njit(cache=True, nogil=True, fastmath=FAST)
@@ -112,9 +145,18 @@ def _solve(
     """Temperatures of L facets at all places and nodes; out[0]: rounds, out[1]: sweeps, out[2]: what still moved, K.
 
     absorbed (p, n, L) W/m2; weights (p, 2 n); season (p, p) for unit inertia; gamma: thermal inertia;
-    t (p, n, L), means (p, L): first guess in, result out; first guess all zero means none.
+    t (p, n, L), means (p, L): result.
+
+    A round solves the places one after the other, each under the sink that the others' latest means make, and then moves
+    all daily means together by Newton's method, since what the orbit conducts is shared among all places.
     """
     places, nodes, lanes = absorbed.shape
+    matrix = np.empty((places, places))
+    step = np.empty(places)
+    residual = np.empty(places)
+    cubes = np.empty(places)
+    lane_means = np.empty(places)
+    lane_absorbed = np.empty(places)
     for p in range(places):
         for l in range(lanes):
             absorbed_mean[p, l] = 0.0
@@ -123,14 +165,16 @@ def _solve(
                 absorbed_mean[p, l] += absorbed[p, j, l]
         for l in range(lanes):
             absorbed_mean[p, l] /= nodes
+    for l in range(lanes):
+        lane_absorbed[:] = absorbed_mean[:, l]
+        _first_means(lane_absorbed, season, es, gamma, lane_means, matrix, step)
+        means[:, l] = lane_means
     sweeps = 0
     rounds = 0
     still = 0.0
     for r in range(most_rounds):
         rounds = r + 1
         still = 0.0
-        # early rounds need not settle what the next round's sink will move again
-        goal = tol if places == 1 else max(tol, 0.3 * 0.1**r)
         for p in range(places):
             for l in range(lanes):
                 other[l] = 0.0
@@ -140,26 +184,47 @@ def _solve(
                     for l in range(lanes):
                         other[l] += b * means[q, l]
             w0 = gamma * season[p, p]
-            before = means[p].copy()
+            if r == 0:  # the day before, or no variation at all, is the guess
+                for l in range(lanes):
+                    shift[l] = means[p, l] - means[p - 1, l] if p > 0 else 0.0
+                for j in range(nodes):
+                    for l in range(lanes):
+                        t[p, j, l] = max(t[p - 1, j, l] + shift[l], 0.0) if p > 0 else means[p, l]
+            worst = 0.0
             for s in range(most_sweeps):
                 for l in range(lanes):
                     sink[l] = other[l] + w0 * means[p, l]
-                _sweep(t[p], absorbed[p], weights[p], lanes, nodes, es, sink, r == 0 and s == 0, row, moved)
-                _shift_mean(
-                    t[p], lanes, nodes, es, w0, other, absorbed_mean[p], means[p], shift, m2, m3, m4
-                )
+                _sweep(t[p], absorbed[p], weights[p], lanes, nodes, es, sink, r == 0 and s < 2, row, moved)
+                _shift_mean(t[p], lanes, nodes, es, w0, other, absorbed_mean[p], means[p], shift, m2, m3, m4)
                 sweeps += 1
                 worst = 0.0
                 for l in range(lanes):
                     worst = max(worst, moved[l])
-                if worst < goal:
+                if worst < tol:
                     break
-            if places == 1:
-                still = max(still, worst)
-            else:
-                for l in range(lanes):
-                    still = max(still, abs(means[p, l] - before[l]))
-                still = max(still, 0.0 if worst < goal else worst)
+            still = max(still, 0.0 if worst < tol else worst)
+        if places == 1:
+            break
+        for l in range(lanes):
+            for p in range(places):
+                flow = 0.0
+                for q in range(places):
+                    flow += season[p, q] * means[q, l]
+                c3 = 0.0
+                c4 = 0.0
+                for j in range(nodes):
+                    x = t[p, j, l]
+                    c3 += x * x * x
+                    c4 += x * x * x * x
+                cubes[p] = c3 / nodes
+                residual[p] = absorbed_mean[p, l] - es * c4 / nodes - gamma * flow
+                lane_means[p] = means[p, l]
+            _balance_season(lane_means, cubes, residual, season, es, gamma, matrix, step)
+            for p in range(places):
+                still = max(still, abs(step[p]))
+                for j in range(nodes):
+                    t[p, j, l] += step[p]
+                means[p, l] += step[p]
         if still < tol:
             break
     out[0], out[1], out[2] = rounds, sweeps, still
