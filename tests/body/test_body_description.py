@@ -192,7 +192,7 @@ def test_the_dictionary_of_a_body_is_json_and_leaves_out_what_is_not_set():
 
 line_ends = ["Cc", "Zl", "Zp"]
 names = st.text(st.characters(codec="utf-8", exclude_categories=line_ends), min_size=1, max_size=50).filter(str.strip)
-facet_counts = st.integers(8, 2_000_000)
+facet_counts = st.integers(20, 2_000_000)
 shapes = st.one_of(
     st.builds(
         ShapeSource,

@@ -1,0 +1,5 @@
+"""`python -m smallbody.cli` is `smallbody`."""
+
+from smallbody.cli import main
+
+main()
