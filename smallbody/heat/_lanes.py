@@ -1,3 +1,4 @@
+# mypy: ignore-errors
 """Sixteen numbers that a kernel works on as one value: the facets of a block, side by side in vector registers.
 
 Numba leaves loops over a short last axis mostly scalar, because it cannot tell that the arrays of a kernel do not
