@@ -410,7 +410,7 @@ class Solver:
     orbit_places: Annotated[Whole, Field(ge=8, le=1024)] | None = None
     light_places: Annotated[Whole, Field(ge=8, le=8192)] | None = None
     shadows: Flag = True
-    lit_samples: Annotated[Literal[1, 4, 16], BeforeValidator(_whole)] = 4
+    lit_samples: Annotated[Literal[1, 4, 16], BeforeValidator(_whole)] = 16
     method: Literal["lag", "march"] = "lag"
     march_steps: Annotated[Whole, Field(ge=16, le=8192)] = 96
     halved_shape: Flag = True
