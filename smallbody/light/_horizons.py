@@ -80,7 +80,8 @@ def _block_sky(
     heights,
     samples,
     shifts,
-    columns,
+    cosine,
+    sine,
     slack,
     node_low,
     node_high,
@@ -97,9 +98,10 @@ def _block_sky(
     """Blocked intervals for the facets start..end.
 
     corners (f, 3, 3) m; normals (f, 3); heights (f,): n.x of each facet's plane, m; samples (f, s, 3): points, m;
-    shifts (s,): meridian c of sample s stands at 2 pi (c + shifts[s])/columns; slack: what lies lower over the
-    facet's plane than this is not an obstacle, m. Out: low, high (b, s, c, MOST + 1) sin(latitude), counts (b, s, c).
+    shifts (s,): meridian c of sample s stands at 2 pi (c + shifts[s])/columns; cosine, sine (s, c) of that angle;
+    slack: what lies lower over the facet's plane than this is not an obstacle, m. Out: low, high (b, s, c, MOST + 1) sin(latitude), counts (b, s, c).
     """
+    columns = cosine.shape[1]
     for f in range(start, end):
         b = f - start
         n0, n1, n2 = normals[f, 0], normals[f, 1], normals[f, 2]
@@ -107,14 +109,24 @@ def _block_sky(
         near = _above_plane(
             n0, n1, n2, d + slack, node_low, node_high, node_start, node_end, node_skip, nodes, order, corners, found
         )
+        kept = 0
+        for i in range(near):  # a facet whose plane has all of this one behind it cannot block: its back is turned
+            t = found[i]
+            if t == f:
+                continue
+            for k in range(3):
+                x, y, z = corners[f, k, 0], corners[f, k, 1], corners[f, k, 2]
+                if normals[t, 0] * x + normals[t, 1] * y + normals[t, 2] * z > heights[t] + slack:
+                    found[kept] = t
+                    kept += 1
+                    break
+        near = kept
         for s in range(samples.shape[1]):
             px, py, pz = samples[f, s, 0], samples[f, s, 1], samples[f, s, 2]
             for c in range(columns):
                 counts[b, s, c] = 0
             for i in range(near):
                 t = found[i]
-                if t == f:
-                    continue
                 ax, ay, az = corners[t, 0, 0] - px, corners[t, 0, 1] - py, corners[t, 0, 2] - pz
                 if normals[t, 0] * ax + normals[t, 1] * ay + normals[t, 2] * az >= 0.0:
                     continue  # its back is turned: on a closed surface the front that hides it blocks as well
@@ -135,8 +147,7 @@ def _block_sky(
                         first, last = 0, columns - 1
                 for k in range(first, last + 1):
                     c = k % columns
-                    angle = 2.0 * math.pi * (c + shifts[s]) / columns
-                    ca, sa = math.cos(angle), math.sin(angle)
+                    ca, sa = cosine[s, c], sine[s, c]
                     da, db, dc = ca * ay - sa * ax, ca * by - sa * bx, ca * cy - sa * cx
                     up_a, up_b, up_c = da >= 0.0, db >= 0.0, dc >= 0.0
                     if up_a == up_b and up_b == up_c:

@@ -76,19 +76,19 @@ class Horizons:
             high=self.high[of_interval],
         )
 
-    def at_centroids(self) -> Horizons:
-        """The same table asked at the centroid of each facet only, which stands last among the samples."""
+    def sampled_coarser(self) -> Horizons:
+        """The same table asked at a quarter of the sample points: those of the next coarser set, which it contains."""
         rows, s = len(self.shadowed_facets), len(self.shifts)
         per = np.diff(self.starts).reshape(rows, s, self.columns)
         keep = np.zeros(per.shape, bool)
-        keep[:, -1] = True
+        keep[:, 3::4] = True
         of_interval = np.repeat(keep.ravel(), per.ravel())
         return Horizons(
             columns=self.columns,
-            shifts=self.shifts[-1:],
-            samples=self.samples[:, -1:],
+            shifts=self.shifts[3::4],
+            samples=self.samples[:, 3::4],
             rows=self.rows,
-            starts=np.concatenate([[0], np.cumsum(per[:, -1].ravel())]).astype(np.int64),
+            starts=np.concatenate([[0], np.cumsum(per[:, 3::4].ravel())]).astype(np.int64),
             low=self.low[of_interval],
             high=self.high[of_interval],
         )
@@ -174,6 +174,8 @@ def _tabulate(shape: Shape, columns: int, shifts: np.ndarray, samples: np.ndarra
         corners.min(1), corners.max(1), shape.centroids_m, order, node_low, node_high, node_start, node_end, node_skip
     )
     slack = SLACK * shape.diameter_m
+    angle = 2 * np.pi * (np.arange(columns) + shifts[:, None]) / columns
+    cosine, sine = np.cos(angle), np.sin(angle)
     done: dict[int, tuple[np.ndarray, np.ndarray, np.ndarray]] = {}
 
     def work(start: int, end: int) -> None:
@@ -183,7 +185,7 @@ def _tabulate(shape: Shape, columns: int, shifts: np.ndarray, samples: np.ndarra
         high = np.empty((b, s, columns, MOST + 2))
         found = np.empty(f, np.int64)
         _block_sky(
-            start, end, corners, normals, heights, samples, shifts, columns, slack,
+            start, end, corners, normals, heights, samples, shifts, cosine, sine, slack,
             node_low, node_high, node_start, node_end, node_skip, nodes, order, found, low, high, counts,
         )  # fmt: skip
         ends = np.cumsum(counts, dtype=np.int64).reshape(counts.shape)

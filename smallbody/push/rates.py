@@ -186,7 +186,7 @@ def _rates(world: _World, light: _Light, lag: _Seen) -> tuple[Table, np.ndarray]
 
 # How much of the change from a coarser repeat is taken for the error of the finer run. A second-order method leaves a
 # third of it; shadow edges converge like noise and leave more. tests/bench/bench_errors.py measures what is left.
-LEFT_OF = {"rotation_nodes": 0.5, "orbit_places": 0.5, "lit_samples": 0.5}
+LEFT_OF = {"rotation_nodes": 0.5, "orbit_places": 0.5, "lit_samples": 0.35}
 
 
 def _errors(fine: Table, coarser: Mapping[str, Table]) -> tuple[Table, dict[str, Table]]:
@@ -264,8 +264,8 @@ def _drift(body: Body, shape: Shape | None, horizons: Horizons | None, meter: Me
     coarser = {"rotation_nodes": fewer, "orbit_places": sparser}
     spread = [coefficients_thin - coefficients, coefficients_half - coefficients]
     if len(horizons.shifts) > 1 and horizons.overshadowed.any():
-        light_centre = _light(world, horizons.at_centroids(), light_places, meter)
-        coarser["lit_samples"], other = _rates(world, light_centre, lag)
+        light_few = _light(world, horizons.sampled_coarser(), light_places, meter)
+        coarser["lit_samples"], other = _rates(world, light_few, lag)
         spread.append(other - coefficients)
     errors, by_cause = _errors(fine, coarser)
     clock.lap("coarser repeats")
