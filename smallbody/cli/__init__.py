@@ -68,6 +68,16 @@ class OneLine(click.Group):
             except MemoryError:
                 click.echo("smallbody: not enough memory for this many facets, nodes and places", err=True)
                 raise click.exceptions.Exit(2) from None
+            except (click.ClickException, click.exceptions.Exit, click.Abort, BrokenPipeError):
+                raise
+            except Exception as error:
+                if talk_of(ctx).loudness > 0:
+                    import traceback
+
+                    click.echo(traceback.format_exc(), err=True)
+                reason = f"{type(error).__name__}: {' '.join(str(error).split())}"
+                click.echo(f"smallbody: {reason} (a fault of the program, not yours; -v shows where)", err=True)
+                raise click.exceptions.Exit(1) from None
 
     def main(
         self,

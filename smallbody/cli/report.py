@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 import textwrap
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
@@ -212,21 +212,55 @@ def _beside(result: Drift) -> Table:
         shown = number_with_error(getattr(push, key), push.numerical_error.get(key, math.nan))
         table.add_row(f"{key[:2].upper()}, {direction}", f"{shown} au/d2")
     table.add_row("Area to mass, beta", f"{_few(push.area_to_mass_m2_per_kg)[1:]} m2/kg, {_few(push.beta)}")
-    table.add_row(
-        "Energy out over in", f"1 {'+' if checks.energy_balance >= 0 else '-'} {abs(checks.energy_balance):.1e}"
-    )
+    balance = checks.energy_balance
+    table.add_row("Energy out over in", f"1 {'-' if balance < 0 else '+'} {_few(abs(balance), 1)[1:]}")
     table.add_row("Overshadowed", f"{share(checks.overshadowed_fraction)} of {checks.facets:,} facets")
-    table.add_row(
-        "Rotations in an orbit",
-        f"{checks.rotations_per_orbit:,.4g}"
-        if checks.rotations_per_orbit < 100
-        else f"{checks.rotations_per_orbit:,.0f}",
-    )
+    rotations = checks.rotations_per_orbit
+    table.add_row("Rotations in an orbit", f"{rotations:,.4g}" if rotations < 100 else f"{rotations:,.0f}")
     return table
 
 
-def _few(value: float) -> str:
+def _few(value: float, decimals: int = 2) -> str:
     if not math.isfinite(value):
         return "undefined"
-    digits, _, exponent = f"{value:+.2e}".partition("e")
+    digits, _, exponent = f"{value:+.{decimals}e}".partition("e")
     return f"{digits}e{int(exponent)}"
+
+
+UNITS = {"_m5": "m5", "_m3": "m3", "_m2": "m2", "_km3": "km3", "_km2": "km2", "_km": "km", "_deg": "deg", "_m": "m"}
+
+
+def print_facts(name: str, facts: Mapping[str, Any]) -> None:
+    """Print what is known of a shape, a line for each fact; the unit is what the fact's name ends in."""
+    rows = [(_label(key), _fact(key, value)) for key, value in facts.items()]
+    widest = max(len(label) for label, _ in rows)
+    lines = [name, *(f"  {label:{widest}}  {fact}" for label, fact in rows)]
+    print("\n".join(line.rstrip() for line in lines))
+
+
+def _unit(key: str) -> str:
+    return next((ending for ending in UNITS if key.endswith(ending)), "")
+
+
+def _label(key: str) -> str:
+    return key.removesuffix(_unit(key)).removesuffix("_fraction").replace("_", " ")
+
+
+def _fact(key: str, value: Any) -> str:
+    unit = UNITS.get(_unit(key), "")
+    if key.endswith("_fraction"):
+        return share(float(value))
+    if isinstance(value, Mapping):
+        return ", ".join(f"{_label(k)} {_fact(k, v)}" for k, v in value.items())
+    if isinstance(value, str):
+        return value
+    if hasattr(value, "tolist"):
+        value = value.tolist()
+    if isinstance(value, bool):
+        return "yes" if value else "no"
+    if isinstance(value, int):
+        return f"{value:,} {unit}".strip()
+    if isinstance(value, (list, tuple)):
+        join = " x " if "extent" in key else ", "
+        return f"{join.join(_fact('', one) for one in value)} {unit}".strip()
+    return f"{value:.6g} {unit}".strip() if isinstance(value, float) else str(value)
