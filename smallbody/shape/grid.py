@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from dataclasses import dataclass
 
 import numpy as np
 
@@ -21,24 +22,65 @@ def nearest_facet_count(facets: int) -> int:
     return int(counts[np.abs(np.log(counts / facets)).argmin()])
 
 
-def sphere_grid(facets: int) -> tuple[np.ndarray, np.ndarray]:
-    """Unit vectors (v, 3) and facets (f, 3), outward, of a geodesic grid with the nearest possible number of facets.
+@dataclass(frozen=True)
+class Grid:
+    """A geodesic grid.
 
-    facets : at least 20; made are 20 n^2 (each face of an icosahedron in n^2) or 60 n^2 (each face first in three)
+    points : (v, 3) unit vectors
+    facets : (f, 3) outward
+    steps : n, the parts of each side of a base face
+    base : 20 or 60 faces
+    numbers : (base, n + 1, n + 1) vertex i steps from the first towards the second corner of a face and j towards the
+        third; -1 where i + j > n
+    """
+
+    points: np.ndarray
+    facets: np.ndarray
+    steps: int
+    base: int
+    numbers: np.ndarray
+
+    def carry(self, values: np.ndarray, to: Grid) -> np.ndarray:
+        """Values at the vertices of this grid (v, ...), linear within facets, at those of another on the same base."""
+        n, m = self.steps, to.steps
+        i, j = np.nonzero(to.numbers[0] >= 0)
+        x, y = i * (n / m), j * (n / m)
+        i0, j0 = np.minimum(x.astype(int), n - 1), np.minimum(y.astype(int), n - 1)
+        i0 = np.where(i0 + j0 > n - 1, n - 1 - j0, i0)  # on the far side, rounding must not step over it
+        u, v = x - i0, y - j0
+        upper = (u + v > 1.0 + 1e-12) & (i0 + j0 < n - 1)
+        low, right, left = (self.numbers[:, i0 + di, j0 + dj] for di, dj in ((0, 0), (1, 0), (0, 1)))
+        far = self.numbers[:, np.where(upper, i0 + 1, i0), np.where(upper, j0 + 1, j0)]
+        weights = np.where(upper, [u + v - 1.0, 1.0 - v, 1.0 - u], [1.0 - u - v, u, v])
+        first = np.where(upper, far, low)
+        mixed = sum(w[:, None] * values[k] for w, k in zip(weights, (first, right, left)))
+        out = np.empty((len(to.points), *values.shape[1:]))
+        out[to.numbers[:, i, j]] = mixed
+        return out
+
+
+def sphere_grid(facets: int) -> Grid:
+    """The geodesic grid with the number of facets nearest to the one asked for.
+
+    facets : made are 20 n^2 (each face of an icosahedron in n^2) or 60 n^2 (each face first in three)
 
     The grid has the symmetry of the icosahedron with a five-fold axis along z, mirror planes among it, so that what
     vanishes on a sphere by symmetry vanishes on the grid too.
     """
     count = nearest_facet_count(facets)
-    corners, faces = _icosahedron()
     n = math.isqrt(count // 20)
-    if 20 * n * n != count:
-        n = math.isqrt(count // 60)
+    return grid_on(20, n) if 20 * n * n == count else grid_on(60, math.isqrt(count // 60))
+
+
+def grid_on(base: int, steps: int) -> Grid:
+    """The geodesic grid on 20 or 60 base faces with their sides in so many parts."""
+    corners, faces = _icosahedron()
+    if base == 60:
         centres = corners[faces].sum(axis=1)
         centres /= np.linalg.norm(centres, axis=1)[:, None]
         faces = _thirds(faces, len(corners))
         corners = np.concatenate([corners, centres])
-    return _subdivide(corners, faces, n)
+    return _subdivide(corners, faces, steps)
 
 
 def _icosahedron() -> tuple[np.ndarray, np.ndarray]:
@@ -68,7 +110,7 @@ def _thirds(faces: np.ndarray, first_centre: int) -> np.ndarray:
     return np.array(sorted(out))
 
 
-def _subdivide(corners: np.ndarray, faces: np.ndarray, n: int) -> tuple[np.ndarray, np.ndarray]:
+def _subdivide(corners: np.ndarray, faces: np.ndarray, n: int) -> Grid:
     """Every face in n^2, equal steps of angle along its sides, points on the unit sphere."""
     edges = np.unique(np.sort(faces[:, [[0, 1], [1, 2], [2, 0]]].reshape(-1, 2), axis=1), axis=0)
     edge_number = {(a, b): k for k, (a, b) in enumerate(edges.tolist())}
@@ -100,7 +142,9 @@ def _subdivide(corners: np.ndarray, faces: np.ndarray, n: int) -> tuple[np.ndarr
     up = [(place[a, b], place[a + 1, b], place[a, b + 1]) for a, b in place if a + b < n]
     down = [(place[a + 1, b], place[a + 1, b + 1], place[a, b + 1]) for a, b in place if a + b < n - 1]
     facets = number[:, np.array(up + down)].reshape(-1, 3)
-    return vertices, facets
+    numbers = np.full((len(faces), n + 1, n + 1), -1)
+    numbers[:, i, j] = number
+    return Grid(vertices, facets, n, len(faces), numbers)
 
 
 def _blend(points: np.ndarray, weights: np.ndarray, theta: float) -> np.ndarray:

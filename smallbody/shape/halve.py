@@ -20,11 +20,11 @@ def halved(shape: Shape) -> Shape:
 
 
 def _made_again(shape: Shape) -> Shape:
-    from smallbody.shape.make import make_shape
+    from smallbody.shape.make import KINDS, make_shape
 
     assert shape.made is not None
     made = shape.made
-    half = make_shape(made.kind, max(len(shape.facets) // 2, 1), made.seed, nearest=True, **made.numbers)
+    half = make_shape(made.kind, max(len(shape.facets) // 2, KINDS[made.kind].fewest), made.seed, **made.numbers)
     if len(half.facets) >= len(shape.facets):
         raise ShapeError(f"a {made.kind} of {len(shape.facets)} facets cannot be made with half as many")
     return half._mapped(np.array(made.frame))

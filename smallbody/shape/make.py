@@ -11,23 +11,25 @@ from typing import Any
 import numpy as np
 
 from smallbody.errors import ShapeError
+from smallbody.shape.even import Radius, even_surface
 from smallbody.shape.grid import nearest_facet_count, sphere_grid
-from smallbody.shape.model import Made, Shape
+from smallbody.shape.model import Made, Shape, mass_properties
 
 MOST_FACETS = 5_000_000
-
-Radius = Callable[[np.ndarray], np.ndarray]  # (n, 3) unit vectors to (n,) distances from the body's middle
+FRAME_FACETS = 20_480
+LONGEST = 20.0  # longest over shortest axis of an ellipsoid whose facets can still be spread evenly
 
 
 @dataclass(frozen=True)
 class Number:
-    """A number that a maker takes: what it is, its default, and the range it may have."""
+    """A number that a maker takes: what it is, its default, its range, and values in it that it may not have."""
 
     about: str
     default: float
     low: float
     high: float
     whole: bool = False
+    barred: tuple[int, ...] = ()
 
 
 @dataclass(frozen=True)
@@ -50,11 +52,11 @@ class Kind:
     even: bool = True
 
 
-def make_shape(kind: str, facets: int, seed: int = 0, *, nearest: bool = True, **numbers: Any) -> Shape:
+def make_shape(kind: str, facets: int, seed: int = 0, **numbers: Any) -> Shape:
     """A body of some kind, centre of mass at the origin, by default as large as a sphere of 1 km diameter.
 
     kind : one of `KINDS`
-    facets : how many; the nearest of 20 n^2 and 60 n^2 (320, 500, 540, 720, 960, 980, ...) is made
+    facets : how many; the nearest of 20 n^2 and 60 n^2 (20, 60, 80, 180, 240, 320, 500, 540, ...) is made
     seed : for kinds with chance in them; the same seed gives the same body, whatever the number of facets
     numbers : `diameter_km` (of the sphere with the same volume) and the numbers of the kind; an ellipsoid's `axes`,
         semi-axes in km, set its size unless diameter_km does
@@ -71,22 +73,31 @@ def make_shape(kind: str, facets: int, seed: int = 0, *, nearest: bool = True, *
     seed = _whole("seed", seed, 0, 2**63)
     diameter_km = numbers.get("diameter_km")
     if diameter_km is not None:
-        diameter_km = _number("diameter_km", diameter_km, Number("", 1.0, 1e-6, 1e6))
+        diameter_km = _number("diameter_km", diameter_km, Number("", 1.0, 1e-9, 1e6))
     chosen = _chosen(kind, {k: v for k, v in numbers.items() if k != "diameter_km"})
 
     radius = what.radius(chosen, np.random.default_rng(seed))
-    directions, triangles = sphere_grid(facets)
-    vertices = directions * radius(directions)[:, None]
+    if what.even:
+        vertices, triangles = even_surface(radius, facets)
+    else:
+        grid = sphere_grid(facets)
+        vertices, triangles = grid.points * radius(grid.points)[:, None], grid.facets
     if diameter_km is None:
         diameter_km = 2.0 * float(np.cbrt(np.prod(chosen["axes"]))) if "axes" in chosen else 1.0
 
     shape = Shape(vertices, triangles)
-    shape = shape.moved(-shape.mass.centre_m)
     if what.principal:
-        shape = shape.turned(shape.mass.axes)
+        shape = shape.turned(_principal_axes(radius))
+    shape = shape.moved(-shape.mass.centre_m)
     shape = shape.scaled(1000.0 * diameter_km / shape.diameter_m)
     kept = {k: v for k, v in numbers.items() if v is not None}
     return Shape(shape.vertices_m, shape.facets, made=Made(kind, nearest_facet_count(facets), seed, kept))
+
+
+def _principal_axes(radius: Radius) -> np.ndarray:
+    """Rows are the principal axes, from a grid that is always the same: how many facets are asked for turns nothing."""
+    grid = sphere_grid(FRAME_FACETS)
+    return mass_properties(grid.points * radius(grid.points)[:, None], grid.facets).axes
 
 
 def _chosen(kind: str, given: dict[str, Any]) -> dict[str, Any]:
@@ -102,22 +113,25 @@ def _chosen(kind: str, given: dict[str, Any]) -> dict[str, Any]:
         axes = given.get("axes", (0.6, 0.5, 0.125 / 0.3))
         if not isinstance(axes, list | tuple | np.ndarray) or len(axes) != 3:
             raise ShapeError(f"an ellipsoid's axes are three semi-axes in km, not {axes!r}")
-        chosen["axes"] = [_number("axes", a, Number("", 1.0, 1e-6, 1e6)) for a in axes]
-        if max(chosen["axes"]) > 100.0 * min(chosen["axes"]):
-            raise ShapeError(f"an ellipsoid's longest axis is at most 100 times its shortest, not {axes!r}")
+        chosen["axes"] = [_number("axes", a, Number("", 1.0, 1e-12, 1e9)) for a in axes]
+        if max(chosen["axes"]) > LONGEST * min(chosen["axes"]):
+            raise ShapeError(f"an ellipsoid's longest axis is at most {LONGEST:g} times its shortest, not {axes!r}")
     return chosen
 
 
 def _number(name: str, value: Any, wanted: Number) -> float | int:
     if wanted.whole:
-        return _whole(name, value, int(wanted.low), int(wanted.high))
+        number = _whole(name, value, int(wanted.low), int(wanted.high))
+        if number in wanted.barred:
+            raise ShapeError(f"{name} is {' or '.join(str(n) for n in (wanted.high, wanted.low))}, not {number}")
+        return number
     try:
-        number = math.nan if isinstance(value, bool | str | bytes) else float(value)
+        real = math.nan if isinstance(value, bool | str | bytes) else float(value)
     except (TypeError, ValueError):
-        number = math.nan
-    if not wanted.low <= number <= wanted.high:
+        real = math.nan
+    if not wanted.low <= real <= wanted.high:
         raise ShapeError(f"{name} is a number from {wanted.low:g} to {wanted.high:g}, not {value!r}")
-    return number
+    return real
 
 
 def _whole(name: str, value: Any, low: int, high: int) -> int:
@@ -232,13 +246,16 @@ def _twolobe(numbers: dict[str, Any], rng: np.random.Generator) -> Radius:
     ring = neck * small
     lobes = [(1.0, -math.sqrt(1.0 - ring**2)), (small, math.sqrt(small**2 - ring**2))]
 
-    def outside(points: np.ndarray) -> np.ndarray:
-        distances = [np.sqrt((((points - [x, 0.0, 0.0]) / flat) ** 2).sum(axis=1)) - size for size, x in lobes]
-        low = np.minimum(*distances)
-        return np.asarray(low - np.log(sum(np.exp(-sharp * (d - low)) for d in distances)) / sharp)
-
     def radius(u: np.ndarray) -> np.ndarray:
-        return _root(lambda r: outside(u * r[:, None]), np.full(len(u), 4.0)) * np.exp(rough(u))
+        # in the stretched frame of a lobe at x, |r u - centre|^2 = squared r^2 - 2 x u_x r + x^2
+        squared = ((u / flat) ** 2).sum(axis=1)
+
+        def outside(r: np.ndarray) -> np.ndarray:
+            one, two = (np.sqrt(np.maximum((squared * r - 2.0 * x * u[:, 0]) * r + x**2, 0.0)) - s for s, x in lobes)
+            low = np.minimum(one, two)
+            return np.asarray(low - np.log1p(np.exp(-sharp * np.abs(one - two))) / sharp)
+
+        return _root(outside, np.full(len(u), 4.0)) * np.exp(rough(u))
 
     return radius
 
@@ -288,27 +305,37 @@ def _windmill(numbers: dict[str, Any], rng: np.random.Generator) -> Radius:
 
 
 def _root(f: Callable[[np.ndarray], np.ndarray], high: np.ndarray) -> np.ndarray:
-    """Where f, negative at 0 and positive at `high`, passes zero: bisection to the last digits."""
-    low = np.zeros_like(high)
-    for _ in range(56):
-        middle = 0.5 * (low + high)
-        inside = f(middle) < 0.0
+    """Where f, negative at 0 and positive at `high`, passes zero, to some thirteen digits.
+
+    source : regula falsi with halved ends, "Illinois" (Dowell & Jarratt 1971, BIT 11, 168), every third step a bisection
+    """
+    low, f_low, f_high = np.zeros_like(high), f(np.zeros_like(high)), f(high)
+    side = np.zeros(len(high), dtype=int)
+    for k in range(60):
+        middle = 0.5 * (low + high) if k % 3 == 2 else low + (high - low) * (f_low / (f_low - f_high))
+        f_middle = f(middle)
+        inside = f_middle < 0.0
+        f_high = np.where(inside, np.where(side == 1, 0.5 * f_high, f_high), f_middle)
+        f_low = np.where(inside, f_middle, np.where(side == -1, 0.5 * f_low, f_low))
         low, high = np.where(inside, middle, low), np.where(inside, high, middle)
+        side = np.where(inside, 1, -1)
+        if (np.minimum(high - low, np.abs(f_middle)) < 1e-13).all():
+            return middle
     return 0.5 * (low + high)
 
 
 _ROUGH = Number("relative standard deviation of the radius by a random roughness", 0.03, 0.0, 0.15)
 
 KINDS: dict[str, Kind] = {
-    "sphere": Kind("a sphere", _sphere, fewest=20, even=False),
-    "ellipsoid": Kind("a triaxial ellipsoid (axes: three semi-axes, km)", _ellipsoid, fewest=20),
+    "sphere": Kind("a sphere", _sphere, fewest=8, even=False),
+    "ellipsoid": Kind("a triaxial ellipsoid (axes: three semi-axes, km)", _ellipsoid, fewest=8),
     "gaussian": Kind(
         "a Gaussian random sphere",
         _gaussian,
         {
-            "sigma": Number("relative standard deviation of the radius", 0.2, 0.0, 0.5),
-            "index": Number("the covariance falls with degree l as l to minus this", 3.5, 1.0, 8.0),
-            "degree": Number("highest degree of the harmonics", 10, 2, 60, whole=True),
+            "sigma": Number("relative standard deviation of the radius", 0.2, 0.0, 0.4),
+            "index": Number("the covariance falls with degree l as l to minus this", 3.5, 2.0, 8.0),
+            "degree": Number("highest degree of the harmonics", 10, 2, 30, whole=True),
         },
         principal=True,
     ),
@@ -325,8 +352,8 @@ KINDS: dict[str, Kind] = {
         "two lobes in contact, with a neck",
         _twolobe,
         {
-            "ratio": Number("radius of the smaller lobe over that of the larger", 0.75, 0.4, 1.0),
-            "neck": Number("radius of the neck over that of the smaller lobe", 0.45, 0.25, 0.9),
+            "ratio": Number("radius of the smaller lobe over that of the larger", 0.75, 0.5, 1.0),
+            "neck": Number("radius of the neck over that of the smaller lobe", 0.45, 0.3, 0.9),
             "flat": Number("y over x axis of a lobe, and z over y", 0.92, 0.7, 1.0),
             "blend": Number("rounding at the neck, in radii of the larger lobe", 0.02, 0.005, 0.1),
             "roughness": _ROUGH,
@@ -337,9 +364,9 @@ KINDS: dict[str, Kind] = {
         "an irregular body with bowls pressed into it",
         _cratered,
         {
-            "craters": Number("how many", 40, 0, 500, whole=True),
-            "widest_deg": Number("diameter of the largest, degrees seen from the middle", 50.0, 5.0, 90.0),
-            "depth": Number("depth over diameter", 0.18, 0.0, 0.3),
+            "craters": Number("how many", 40, 0, 200, whole=True),
+            "widest_deg": Number("diameter of the largest, degrees seen from the middle", 50.0, 5.0, 70.0),
+            "depth": Number("depth over diameter", 0.18, 0.0, 0.2),
             "roughness": Number("relative standard deviation of the radius of the body below", 0.08, 0.0, 0.2),
         },
         principal=True,
@@ -348,10 +375,10 @@ KINDS: dict[str, Kind] = {
         "a sphere with blades, which sunlight spins up (hand 1) or down (hand -1)",
         _windmill,
         {
-            "blades": Number("how many", 4, 2, 12, whole=True),
-            "height": Number("of a blade, in radii of the sphere", 0.3, 0.02, 0.6),
-            "steep": Number("part of a blade's width that its steep side takes", 0.15, 0.05, 0.5),
-            "hand": Number("1 spins up, -1 down", 1, -1, 1, whole=True),
+            "blades": Number("how many", 4, 2, 8, whole=True),
+            "height": Number("of a blade, in radii of the sphere", 0.3, 0.02, 0.5),
+            "steep": Number("part of a blade's width that its steep side takes", 0.15, 0.1, 0.5),
+            "hand": Number("1 spins up, -1 down", 1, -1, 1, whole=True, barred=(0,)),
         },
     ),
 }

@@ -1,0 +1,108 @@
+"""Facets spread evenly over a star-shaped body."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+
+import numpy as np
+
+from smallbody.shape.grid import Grid, grid_on, sphere_grid
+
+Radius = Callable[[np.ndarray], np.ndarray]  # (n, 3) unit vectors to (n,) distances from the body's middle
+
+COARSEST = 5  # steps of the first grid
+ROUNDS = 40  # of moving vertices on each grid but the last
+LAST_ROUNDS = 24  # on the last, between swaps of edges
+STEP = 0.8  # of the way to the middle of the facets around
+
+
+def even_surface(radius: Radius, facets: int) -> tuple[np.ndarray, np.ndarray]:
+    """Vertices (v, 3) and facets (f, 3), outward, of a body given by its radius in every direction.
+
+    radius : positive, continuous
+    facets : as for `sphere_grid`; their number is kept
+
+    Vertices move along the surface towards the middle of the facets around them (Lloyd's method with centroids, area
+    for weight), first on coarse grids that carry them far, then on finer ones; on the finest, edges are swapped where
+    that betters the worse of two facets. No facet ever turns over as seen from the middle, so the surface stays closed
+    and cannot cut through itself.
+    """
+    last = sphere_grid(facets)
+    steps = [last.steps]
+    while steps[-1] > 2 * COARSEST:
+        steps.append(steps[-1] // 2)
+    grid: Grid | None = None
+    directions = np.empty((0, 3))
+    for n in reversed(steps):
+        finer = last if n == last.steps else grid_on(last.base, n)
+        if grid is None:
+            directions = _stretched(radius, finer)
+        else:
+            directions = _unit(grid.carry(directions, finer))
+            if not _faces_out(directions, finer.facets):
+                directions = finer.points
+        grid = finer
+        if n != last.steps:
+            directions = _spread(radius, directions, grid.facets, ROUNDS)
+    return _finish(radius, directions, last.facets)
+
+
+def _stretched(radius: Radius, grid: Grid) -> np.ndarray:
+    """Directions of the grid's points after the linear map that gives a sphere the second moments of the surface.
+
+    On a long body these are far more even than the grid's own directions, which crowd at the waist.
+    """
+    p = grid.points * radius(grid.points)[:, None]
+    a, b, c = (p[grid.facets[:, k]] for k in range(3))
+    doubled = np.cross(b - a, c - a)
+    area = np.sqrt((doubled**2).sum(axis=1))
+    middle = (a + b + c) / 3.0
+    second = np.einsum("f,fi,fj->ij", area, middle, middle) / area.sum()
+    squares, axes = np.linalg.eigh(second)
+    return _unit(grid.points @ (axes * np.sqrt(squares)) @ axes.T)
+
+
+def _unit(v: np.ndarray) -> np.ndarray:
+    return np.asarray(v / np.sqrt((v**2).sum(axis=1))[:, None])
+
+
+def _faces_out(u: np.ndarray, f: np.ndarray) -> bool:
+    a, b, c = (u[f[:, k]] for k in range(3))
+    return bool((np.einsum("ij,ij->i", a, np.cross(b, c)) > 0.0).all())
+
+
+def _spread(radius: Radius, directions: np.ndarray, facets: np.ndarray, rounds: int) -> np.ndarray:
+    from smallbody.shape._relax import hold_back, spread
+
+    u = directions.copy()
+    normal, weight, moved = np.empty_like(u), np.empty(len(u)), np.empty_like(u)
+    for _ in range(rounds):
+        spread(u * radius(u)[:, None], facets, STEP, normal, weight, moved)
+        new = _unit(moved)
+        hold_back(u, new, facets)
+        u = new
+    return u
+
+
+def _finish(radius: Radius, directions: np.ndarray, facets: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
+    from smallbody.shape._relax import neighbours, swap_edges
+
+    f = facets.copy()
+    n = len(directions)
+    key = (f * n + f[:, [1, 2, 0]]).ravel()
+    order = np.argsort(key)
+    across = np.empty_like(f)
+    neighbours(f, (key[order], order // 3, n), across)
+    degree = np.bincount(f.ravel(), minlength=n)
+    u = directions
+    for _ in range(LAST_ROUNDS // 4):
+        p = u * radius(u)[:, None]
+        for _ in range(10):
+            if not swap_edges(p, f, across, degree, True):
+                break
+        u = _spread(radius, u, f, 4)
+    p = u * radius(u)[:, None]
+    for _ in range(10):
+        if not swap_edges(p, f, across, degree, False):
+            break
+    return p, f
