@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import os
+import re
 import stat
 import tempfile
 from pathlib import Path
@@ -10,27 +11,42 @@ from pathlib import Path
 from smallbody.errors import ShapeError
 from smallbody.shape.model import Shape
 from smallbody.shape.obj import obj_bytes, parse_obj
+from smallbody.shape.stlply import looks_like_stl, parse_ply, parse_stl, ply_bytes, stl_bytes
+from smallbody.shape.table import parse_table, table_bytes
 
 METRES = {"km": 1000.0, "m": 1.0}
-FORMATS = {"obj": (".obj",)}
+FORMATS = {"obj": (".obj",), "table": (".tab", ".txt", ".tbl", ".dat"), "stl": (".stl",), "ply": (".ply",)}
+_OBJ_STATEMENT = re.compile(rb"^[ \t]*(v|f|vn|vt|o|g|mtllib)[ \t]", re.MULTILINE)
 LARGEST_FILE = 2 * 1024**3  # bytes; a shape of ten million facets is smaller
 
 
 def read_shape(path: str | os.PathLike[str], length_unit: str = "km") -> Shape:
     """The surface in a file. It is read, not judged: `check_shape` says whether it can be used.
 
-    path : file
+    path : file; .obj, .stl and .ply are what they say, under any other name the content tells (OBJ or a table, mostly)
     length_unit : "km" or "m", the unit of the file's coordinates
     raises : ShapeError, with file and line, for whatever cannot be read as a shape
     """
     metres = _metres(length_unit)
     data = _content(Path(path))
-    return parse_shape(data, Path(path).name).scaled(metres)
+    return parse_shape(data, os.fspath(path)).scaled(metres)
 
 
 def parse_shape(data: bytes, name: str) -> Shape:
     """The surface in the content of a file, in the file's own unit; see `read_shape`."""
-    return parse_obj(data, name)
+    suffix = Path(name).suffix.lower()
+    if suffix in FORMATS["obj"]:
+        return parse_obj(data, name)
+    if suffix in FORMATS["stl"]:
+        return parse_stl(data, name)
+    if suffix in FORMATS["ply"]:
+        return parse_ply(data, name)
+    if suffix not in FORMATS["table"] and not data.lstrip()[:1].isdigit():
+        if data.startswith((b"ply\n", b"ply\r")):
+            return parse_ply(data, name)
+        if looks_like_stl(data):
+            return parse_stl(data, name)
+    return parse_obj(data, name) if _OBJ_STATEMENT.search(data[:65_536]) else parse_table(data, name)
 
 
 def write_shape(shape: Shape, path: str | os.PathLike[str], length_unit: str = "km") -> None:
@@ -61,8 +77,9 @@ def shape_bytes(shape: Shape, suffix: str, length_unit: str = "km") -> bytes:
     """The content of the file that `write_shape` writes under a name with this suffix."""
     scale = 1.0 / _metres(length_unit)
     head = f"{len(shape.vertices_m)} vertices, {len(shape.facets)} facets, {length_unit}"
-    if suffix in FORMATS["obj"]:
-        return obj_bytes(shape, scale, head)
+    for form, to_bytes in (("obj", obj_bytes), ("table", table_bytes), ("stl", stl_bytes), ("ply", ply_bytes)):
+        if suffix in FORMATS[form]:
+            return to_bytes(shape, scale, head)
     raise ShapeError(
         f"no shape format goes by {suffix!r}; known are {', '.join(s for f in FORMATS.values() for s in f)}"
     )

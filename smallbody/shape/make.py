@@ -307,7 +307,7 @@ def _windmill(numbers: dict[str, Any], rng: np.random.Generator) -> Radius:
 def _root(f: Callable[[np.ndarray], np.ndarray], high: np.ndarray) -> np.ndarray:
     """Where f, negative at 0 and positive at `high`, passes zero, to some thirteen digits.
 
-    source : regula falsi with halved ends, "Illinois" (Dowell & Jarratt 1971, BIT 11, 168), every third step a bisection
+    source : regula falsi, ends halved ("Illinois", Dowell & Jarratt 1971, BIT 11, 168), each third step a bisection
     """
     low, f_low, f_high = np.zeros_like(high), f(np.zeros_like(high)), f(high)
     side = np.zeros(len(high), dtype=int)

@@ -10,12 +10,10 @@ import re
 
 import numpy as np
 
-from smallbody.errors import ShapeError
-from smallbody.shape._text import Lines, assemble, finite_number, quick_numbers
 from smallbody.shape.model import Shape
+from smallbody.shape.text import Lines, assemble, finite_number, index_number, quick_numbers, quick_whole_numbers
 
 _ATTRIBUTES = re.compile(rb"/[0-9/+-]*")
-LARGEST = 10**9  # no index is larger than this; keeps a mistyped one from overflowing
 
 
 def parse_obj(data: bytes, name: str) -> Shape:
@@ -57,12 +55,12 @@ def _quick(lines: Lines) -> Parts | None:
     joined = b"\n".join(f_text)
     if b"/" in joined:
         f_text = _ATTRIBUTES.sub(b"", joined).split(b"\n")
-    facets = quick_numbers(f_text, 3)
-    if facets is None or not ((facets >= 1) & (facets <= len(vertices)) & (facets == np.floor(facets))).all():
+    facets = quick_whole_numbers(f_text, 3)
+    if facets is None or not ((facets >= 1) & (facets <= len(vertices))).all():
         return None
     if f_at[0] < v_at[-1] and (facets.max(axis=1) > np.searchsorted(v_at, f_at)).any():
         return None  # a facet ahead of its vertices: the careful reader knows what to say
-    corners = facets.astype(np.int64).ravel() - 1
+    corners = facets.ravel() - 1
     return vertices, np.array(v_at) + 1, corners, np.full(len(facets), 3), np.array(f_at) + 1
 
 
@@ -113,15 +111,10 @@ def _careful(lines: Lines) -> Parts:
 
 
 def _index(lines: Lines, number: int, word: bytes) -> int:
-    digits = word.split(b"/", 1)[0]
-    body = digits[1:] if digits[:1] in (b"-", b"+") else digits
-    if not body.isdigit():
-        raise lines.error(number, f"corner {lines.show(word)} is not a vertex number")
-    if len(body) > 18 or int(body) > LARGEST:
-        raise lines.error(number, f"corner {lines.show(digits)} is larger than any vertex number")
-    if int(body) == 0:
+    index = index_number(lines, number, word.split(b"/", 1)[0])
+    if index == 0:
         raise lines.error(number, "corner 0 names no vertex: OBJ counts from 1")
-    return int(digits)
+    return index
 
 
 def obj_bytes(shape: Shape, scale: float, head: str) -> bytes:
@@ -130,6 +123,3 @@ def obj_bytes(shape: Shape, scale: float, head: str) -> bytes:
     out += [f"v {x!r} {y!r} {z!r}" for x, y, z in (shape.vertices_m * scale).tolist()]
     out += [f"f {a} {b} {c}" for a, b, c in (shape.facets + 1).tolist()]
     return ("\n".join(out) + "\n").encode("ascii")
-
-
-__all__ = ["ShapeError", "obj_bytes", "parse_obj"]

@@ -13,6 +13,8 @@ from smallbody.errors import Note, ShapeError
 from smallbody.shape.model import Shape, Source
 
 _PLAIN = re.compile(rb"[0-9eE+\-. \t\r\n]*")
+_WHOLE = re.compile(rb"[0-9 \t\n]*")
+LARGEST = 10**9  # no index and no count is larger; keeps a mistyped one from overflowing
 MOST_CORNERS = 10_000  # of one polygon
 NOT_FLAT = 1e-3  # corners out of the mean plane by more than this part of the polygon's size deserve a note
 
@@ -31,9 +33,9 @@ class Lines:
             data = data[3:]
         if b"\r" in data:
             data = data.replace(b"\r\n", b"\n").replace(b"\r", b"\n")
-        self.data = data
+        self.data = data = data.rstrip(b"\x1a")
         self.lines = data.split(b"\n")
-        bad = re.search(rb"[\x00-\x08\x0e-\x19\x1b-\x1f\x7f]", data)
+        bad = re.search(rb"[\x00-\x08\x0e-\x1f\x7f]", data)
         if bad:
             number = data.count(b"\n", 0, bad.start()) + 1
             raise self.error(number, f"is not text: byte 0x{bad.group()[0]:02x}")
@@ -66,12 +68,12 @@ class Lines:
             yield started, b" ".join(pending)
 
 
-def finite_number(lines: Lines, number: int, word: bytes, what: str) -> float:
-    """The number in a word of a line."""
+def finite_number(lines: Lines, number: int, word: bytes, what: str, fortran: bool = True) -> float:
+    """The number in a word of a line; with `fortran`, exponents may be written with a D."""
     try:
         if b"_" in word:
             raise ValueError
-        value = float(word.replace(b"D", b"E").replace(b"d", b"e") if word[-1:].isdigit() else word)
+        value = float(word.replace(b"D", b"E").replace(b"d", b"e") if fortran and word[-1:].isdigit() else word)
     except ValueError:
         raise lines.error(number, f"{what} {lines.show(word)} is not a number") from None
     if not math.isfinite(value):
@@ -79,6 +81,37 @@ def finite_number(lines: Lines, number: int, word: bytes, what: str) -> float:
     if abs(value) > 1e30:
         raise lines.error(number, f"{what} {lines.show(word)} is out of any body's range")
     return value
+
+
+def whole_number(lines: Lines, number: int, word: bytes, what: str) -> int:
+    """The whole number, 0 or more, in a word of a line."""
+    digits = word[1:] if word[:1] == b"+" else word
+    if not digits.isdigit():
+        raise lines.error(number, f"{what} {lines.show(word)} is not a whole number")
+    if len(digits) > 18 or int(digits) > LARGEST:
+        raise lines.error(number, f"{what} {lines.show(word)} is too large for any shape")
+    return int(digits)
+
+
+def index_number(lines: Lines, number: int, word: bytes) -> int:
+    """A corner's vertex number, perhaps negative, in a word of a line."""
+    digits = word[1:] if word[:1] in (b"-", b"+") else word
+    if not digits.isdigit():
+        raise lines.error(number, f"corner {lines.show(word)} is not a vertex number")
+    if len(digits) > 18 or int(digits) > LARGEST:
+        raise lines.error(number, f"corner {lines.show(word)} is larger than any vertex number")
+    return -int(digits) if word[:1] == b"-" else int(digits)
+
+
+def quick_whole_numbers(rows: list[bytes], columns: int) -> np.ndarray | None:
+    """(len(rows), columns) int64 when every row holds exactly that many plain whole numbers; else None."""
+    joined = b" \n".join(rows)
+    if _WHOLE.fullmatch(joined) is None or any(len(row.split()) != columns for row in rows):
+        return None
+    words = np.array(joined.split(), dtype=np.bytes_)
+    if words.dtype.itemsize > 10:
+        return None
+    return words.astype(np.int64).reshape(len(rows), columns)
 
 
 def quick_numbers(rows: list[bytes], columns: int) -> np.ndarray | None:
