@@ -96,15 +96,16 @@ def neighbours(
 
 @njit(cache=True, nogil=True)
 def swap_edges(
-    p, f, nb, degree, regular
-):  # f (t, 3) and nb (t, 3), the facet across edge k to k + 1, are changed in place
-    # plainly: where the other diagonal of two neighbouring facets gives a better worse one, take it
+    p, f, nb, degree, crease, regular
+):  # f (t, 3) and nb (t, 3), facets across edge k to k + 1, change in place
+    # plainly: where the other diagonal of two neighbouring facets gives a better worse one, take it; crease (v,) is the
+    # number of the crease that a vertex lies on, 0 for none: edges along creases stay, and come where they can
     n_swapped = 0
     for t in range(f.shape[0]):
         for k in range(3):
             o = nb[t, k]
             a, b, c = f[t, k], f[t, (k + 1) % 3], f[t, (k + 2) % 3]
-            if degree[a] <= 4 or degree[b] <= 4:
+            if degree[a] <= 4 or degree[b] <= 4 or (crease[a] > 0 and crease[a] == crease[b]):
                 continue
             j = 0
             while f[o, j] != b or f[o, (j + 1) % 3] != a:
@@ -112,7 +113,10 @@ def swap_edges(
             d = f[o, (j + 2) % 3]
             now = min(quality(p, a, b, c), quality(p, b, a, d))
             then = min(quality(p, c, a, d), quality(p, d, b, c))
-            if then <= BETTER * now:  # or, for the sake of six edges at every vertex, not much worse
+            if crease[c] > 0 and crease[c] == crease[d]:
+                if then <= 0.3:
+                    continue
+            elif then <= BETTER * now:  # or, for the sake of six edges at every vertex, not much worse
                 gain = degree[a] + degree[b] - degree[c] - degree[d]  # squared deviations from six fall by 2 (gain - 2)
                 if not regular or gain <= 2 or then <= 0.7 * now or then <= 0.6:
                     continue

@@ -9,18 +9,22 @@ import numpy as np
 from smallbody.shape.grid import Grid, grid_on, sphere_grid
 
 Radius = Callable[[np.ndarray], np.ndarray]  # (n, 3) unit vectors to (n,) distances from the body's middle
+# (n, 3) unit vectors to the numbers, from 1, of the creases nearest to them, and the nearest directions on those
+Creases = Callable[[np.ndarray], tuple[np.ndarray, np.ndarray]]
 
 COARSEST = 5  # steps of the first grid
 ROUNDS = 40  # of moving vertices on each grid but the last
 LAST_ROUNDS = 24  # on the last, between swaps of edges
+REACH = 0.45  # vertices nearer to a crease than this part of their distance from each other are put on it
 STEP = 0.8  # of the way to the middle of the facets around
 
 
-def even_surface(radius: Radius, facets: int) -> tuple[np.ndarray, np.ndarray]:
+def even_surface(radius: Radius, facets: int, creases: Creases | None = None) -> tuple[np.ndarray, np.ndarray]:
     """Vertices (v, 3) and facets (f, 3), outward, of a body given by its radius in every direction.
 
     radius : positive, continuous
     facets : as for `sphere_grid`; their number is kept
+    creases : where the surface has an edge or a furrow that facets should not lie across
 
     Vertices move along the surface towards the middle of the facets around them (Lloyd's method with centroids, area
     for weight), first on coarse grids that carry them far, then on finer ones; on the finest, edges are swapped where
@@ -44,7 +48,7 @@ def even_surface(radius: Radius, facets: int) -> tuple[np.ndarray, np.ndarray]:
         grid = finer
         if n != last.steps:
             directions = _spread(radius, directions, grid.facets, ROUNDS)
-    return _finish(radius, directions, last.facets)
+    return _finish(radius, directions, last.facets, creases)
 
 
 def _stretched(radius: Radius, grid: Grid) -> np.ndarray:
@@ -84,8 +88,10 @@ def _spread(radius: Radius, directions: np.ndarray, facets: np.ndarray, rounds: 
     return u
 
 
-def _finish(radius: Radius, directions: np.ndarray, facets: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
-    from smallbody.shape._relax import neighbours, swap_edges
+def _finish(
+    radius: Radius, directions: np.ndarray, facets: np.ndarray, creases: Creases | None
+) -> tuple[np.ndarray, np.ndarray]:
+    from smallbody.shape._relax import hold_back, neighbours, swap_edges
 
     f = facets.copy()
     n = len(directions)
@@ -94,15 +100,40 @@ def _finish(radius: Radius, directions: np.ndarray, facets: np.ndarray) -> tuple
     across = np.empty_like(f)
     neighbours(f, (key[order], order // 3, n), across)
     degree = np.bincount(f.ravel(), minlength=n)
-    u = directions
-    for _ in range(LAST_ROUNDS // 4):
+    u, on = directions, np.zeros(n, dtype=np.int64)
+
+    def swap(regular: bool) -> None:
         p = u * radius(u)[:, None]
         for _ in range(10):
-            if not swap_edges(p, f, across, degree, True):
+            if not swap_edges(p, f, across, degree, on, regular):
                 break
+
+    for _ in range(LAST_ROUNDS // 4):
+        swap(True)
         u = _spread(radius, u, f, 4)
-    p = u * radius(u)[:, None]
-    for _ in range(10):
-        if not swap_edges(p, f, across, degree, False):
-            break
-    return p, f
+    if creases is not None:
+        for _ in range(4):
+            number, there = creases(u)
+            gap = np.sqrt(((there - u) ** 2).sum(axis=1))
+            on = np.where((gap < REACH * _spacing(radius, u, f)) & (number > 0), number, 0)
+            pulled = np.where(on[:, None] > 0, there, u)
+            hold_back(u, pulled, f)
+            u = pulled
+            on = np.where(np.sqrt(((there - u) ** 2).sum(axis=1)) < 1e-12, on, 0)
+            swap(False)
+            moved = _spread(radius, u, f, 2)
+            u = np.where(on[:, None] > 0, u, moved)
+            hold_back(moved, u, f)
+        on = np.where(np.sqrt(((creases(u)[1] - u) ** 2).sum(axis=1)) < 1e-12, on, 0)
+    swap(False)
+    return u * radius(u)[:, None], f
+
+
+def _spacing(radius: Radius, u: np.ndarray, f: np.ndarray) -> np.ndarray:
+    """Typical distance of a vertex from its neighbours, seen from the middle, radians."""
+    r = radius(u)
+    p = u * r[:, None]
+    a, b, c = (p[f[:, k]] for k in range(3))
+    area = 0.5 * np.sqrt((np.cross(b - a, c - a) ** 2).sum(axis=1))
+    cell = np.bincount(f.ravel(), weights=np.repeat(area, 3) / 3.0, minlength=len(u))
+    return np.asarray(np.sqrt(cell * 2.0 / np.sqrt(3.0)) / r)

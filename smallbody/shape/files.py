@@ -8,6 +8,8 @@ import stat
 import tempfile
 from pathlib import Path
 
+import numpy as np
+
 from smallbody.errors import ShapeError
 from smallbody.shape.model import Shape
 from smallbody.shape.obj import obj_bytes, parse_obj
@@ -49,13 +51,19 @@ def parse_shape(data: bytes, name: str) -> Shape:
     return parse_obj(data, name) if _OBJ_STATEMENT.search(data[:65_536]) else parse_table(data, name)
 
 
-def write_shape(shape: Shape, path: str | os.PathLike[str], length_unit: str = "km") -> None:
+def write_shape(
+    shape: Shape, path: str | os.PathLike[str], length_unit: str = "km", decimals: int | None = None
+) -> None:
     """Writes a shape under its final name only once it is whole.
+
+    path : .obj, .stl, .ply, or for a table .tab, .txt, .tbl, .dat
+    length_unit : "km" or "m", the unit of the coordinates in the file
+    decimals : coordinates are rounded to this many; None keeps all that float64 holds (STL: float32)
 
     raises : ShapeError, for a name that tells no format and a file that cannot be written
     """
     path = Path(path)
-    data = shape_bytes(shape, path.suffix.lower(), length_unit)
+    data = shape_bytes(shape, path.suffix.lower(), length_unit, decimals)
     temporary = None
     try:
         handle, temporary = tempfile.mkstemp(prefix=f".{path.name}.", dir=path.parent)
@@ -73,13 +81,15 @@ def write_shape(shape: Shape, path: str | os.PathLike[str], length_unit: str = "
             os.unlink(temporary)
 
 
-def shape_bytes(shape: Shape, suffix: str, length_unit: str = "km") -> bytes:
+def shape_bytes(shape: Shape, suffix: str, length_unit: str = "km", decimals: int | None = None) -> bytes:
     """The content of the file that `write_shape` writes under a name with this suffix."""
-    scale = 1.0 / _metres(length_unit)
+    coordinates = shape.vertices_m / _metres(length_unit)
+    if decimals is not None:
+        coordinates = np.round(coordinates, decimals) + 0.0  # no -0.0
     head = f"{len(shape.vertices_m)} vertices, {len(shape.facets)} facets, {length_unit}"
     for form, to_bytes in (("obj", obj_bytes), ("table", table_bytes), ("stl", stl_bytes), ("ply", ply_bytes)):
         if suffix in FORMATS[form]:
-            return to_bytes(shape, scale, head)
+            return to_bytes(coordinates, shape.facets, head)
     raise ShapeError(
         f"no shape format goes by {suffix!r}; known are {', '.join(s for f in FORMATS.values() for s in f)}"
     )

@@ -11,12 +11,13 @@ from typing import Any
 import numpy as np
 
 from smallbody.errors import ShapeError
-from smallbody.shape.even import Radius, even_surface
+from smallbody.shape.even import Creases, Radius, even_surface
 from smallbody.shape.grid import nearest_facet_count, sphere_grid
 from smallbody.shape.model import Made, Shape, mass_properties
 
 MOST_FACETS = 5_000_000
 FRAME_FACETS = 20_480
+RIM = 0.2  # height of a crater's rim over its depth
 LONGEST = 20.0  # longest over shortest axis of an ellipsoid whose facets can still be spread evenly
 
 
@@ -42,6 +43,7 @@ class Kind:
     fewest : facets
     principal : turned to its principal axes once made (for bodies without an axis of their own)
     even : facets are spread evenly over the surface, not only in direction
+    creases : where facets should not lie across the surface's edges and furrows, from the checked numbers
     """
 
     about: str
@@ -50,6 +52,7 @@ class Kind:
     fewest: int = 80
     principal: bool = False
     even: bool = True
+    creases: Callable[[dict[str, Any]], Creases] | None = None
 
 
 def make_shape(kind: str, facets: int, seed: int = 0, **numbers: Any) -> Shape:
@@ -78,7 +81,7 @@ def make_shape(kind: str, facets: int, seed: int = 0, **numbers: Any) -> Shape:
 
     radius = what.radius(chosen, np.random.default_rng(seed))
     if what.even:
-        vertices, triangles = even_surface(radius, facets)
+        vertices, triangles = even_surface(radius, facets, what.creases(chosen) if what.creases else None)
     else:
         grid = sphere_grid(facets)
         vertices, triangles = grid.points * radius(grid.points)[:, None], grid.facets
@@ -272,15 +275,19 @@ def _cratered(numbers: dict[str, Any], rng: np.random.Generator) -> Radius:
     if count:
         size[0] = widest / 2.0
 
+    levels = np.exp(rough(place))
+
     def radius(u: np.ndarray) -> np.ndarray:
-        r = np.exp(rough(u))
-        for centre, half in zip(place, size):
+        before = np.exp(rough(u))
+        r = before
+        for centre, half, level in zip(place, size, levels):
             x = np.arccos(np.clip(u @ centre, -1.0, 1.0)) / half  # 0 in the middle, 1 at the rim
-            floor = float(np.exp(rough(centre[None]))[0])
-            deep = 2.0 * half * depth * floor
-            bowl = deep * (1.25 * np.minimum(x, 1.0) ** 2 - 1.0)
-            wall = 0.25 * deep * np.exp(-(((np.maximum(x, 1.0) - 1.0) / 0.35) ** 2))
-            r = r + np.where(x < 1.0, bowl, wall)
+            fresh = np.clip((1.4 - x) / 0.6, 0.0, 1.0)  # what was there before is wiped out inside, and stays outside
+            fresh = fresh * fresh * (3.0 - 2.0 * fresh)
+            deep = 2.0 * half * level * depth
+            bowl = deep * ((1.0 + RIM) * x**2 - 1.0)
+            rim = deep * RIM * np.exp(-(((np.maximum(x, 1.0) - 1.0) / 0.3) ** 2))
+            r = (1.0 - fresh) * r + fresh * before + np.where(x < 1.0, bowl, rim)
         return np.maximum(r, 0.2)
 
     return radius
@@ -302,6 +309,33 @@ def _windmill(numbers: dict[str, Any], rng: np.random.Generator) -> Radius:
         return 1.0 + height * saw * (u[:, 0] ** 2 + u[:, 1] ** 2)
 
     return radius
+
+
+def _equator(numbers: dict[str, Any]) -> Creases:
+    def nearest(u: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
+        s = np.hypot(u[:, 0], u[:, 1])
+        level = u * [1.0, 1.0, 0.0] / np.maximum(s, 0.5)[:, None]
+        return (s > 0.5).astype(np.int64), np.where(s[:, None] > 0.5, level, u)
+
+    return nearest
+
+
+def _blade_edges(numbers: dict[str, Any]) -> Creases:
+    """The meridians at the foot and at the crest of each blade, but for the caps where they crowd."""
+    blades, steep, hand = int(numbers["blades"]), numbers["steep"], numbers["hand"]
+    step = 2.0 * math.pi / blades
+    edges = -hand * step * np.sort(np.concatenate([np.arange(blades), np.arange(blades) + 1.0 - steep]))
+
+    def nearest(u: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
+        away = np.arctan2(u[:, 1], u[:, 0])[:, None] - edges
+        away = np.abs(away - 2.0 * math.pi * np.round(away / (2.0 * math.pi)))
+        which = away.argmin(axis=1)
+        s = np.hypot(u[:, 0], u[:, 1])
+        there = np.stack([s * np.cos(edges[which]), s * np.sin(edges[which]), u[:, 2]], axis=1)
+        clear = s > 0.3
+        return np.where(clear, which + 1, 0), np.where(clear[:, None], there, u)
+
+    return nearest
 
 
 def _root(f: Callable[[np.ndarray], np.ndarray], high: np.ndarray) -> np.ndarray:
@@ -347,6 +381,7 @@ KINDS: dict[str, Kind] = {
             "height": Number("pole over equator", 0.9, 0.5, 1.0),
             "roughness": _ROUGH,
         },
+        creases=_equator,
     ),
     "twolobe": Kind(
         "two lobes in contact, with a neck",
@@ -355,7 +390,7 @@ KINDS: dict[str, Kind] = {
             "ratio": Number("radius of the smaller lobe over that of the larger", 0.75, 0.5, 1.0),
             "neck": Number("radius of the neck over that of the smaller lobe", 0.45, 0.3, 0.9),
             "flat": Number("y over x axis of a lobe, and z over y", 0.92, 0.7, 1.0),
-            "blend": Number("rounding at the neck, in radii of the larger lobe", 0.02, 0.005, 0.1),
+            "blend": Number("rounding at the neck, in radii of the larger lobe", 0.04, 0.005, 0.1),
             "roughness": _ROUGH,
         },
         principal=True,
@@ -364,7 +399,7 @@ KINDS: dict[str, Kind] = {
         "an irregular body with bowls pressed into it",
         _cratered,
         {
-            "craters": Number("how many", 40, 0, 200, whole=True),
+            "craters": Number("how many", 25, 0, 200, whole=True),
             "widest_deg": Number("diameter of the largest, degrees seen from the middle", 50.0, 5.0, 70.0),
             "depth": Number("depth over diameter", 0.18, 0.0, 0.2),
             "roughness": Number("relative standard deviation of the radius of the body below", 0.08, 0.0, 0.2),
@@ -380,5 +415,6 @@ KINDS: dict[str, Kind] = {
             "steep": Number("part of a blade's width that its steep side takes", 0.15, 0.1, 0.5),
             "hand": Number("1 spins up, -1 down", 1, -1, 1, whole=True, barred=(0,)),
         },
+        creases=_blade_edges,
     ),
 }

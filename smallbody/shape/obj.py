@@ -117,9 +117,9 @@ def _index(lines: Lines, number: int, word: bytes) -> int:
     return index
 
 
-def obj_bytes(shape: Shape, scale: float, head: str) -> bytes:
-    """The OBJ file of a shape: coordinates times scale, with as many digits as float64 holds."""
+def obj_bytes(vertices: np.ndarray, facets: np.ndarray, head: str) -> bytes:
+    """The OBJ file of a surface: coordinates with as many digits as float64 holds."""
     out = [f"# {line}" for line in head.splitlines()]
-    out += [f"v {x!r} {y!r} {z!r}" for x, y, z in (shape.vertices_m * scale).tolist()]
-    out += [f"f {a} {b} {c}" for a, b, c in (shape.facets + 1).tolist()]
+    out += [f"v {x!r} {y!r} {z!r}" for x, y, z in vertices.tolist()]
+    out += [f"f {a} {b} {c}" for a, b, c in (facets + 1).tolist()]
     return ("\n".join(out) + "\n").encode("ascii")

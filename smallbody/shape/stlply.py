@@ -300,25 +300,25 @@ def _all_finite(name: str, vertices: np.ndarray) -> None:
         raise ShapeError(f"{name}: vertex {bad[0] + 1} is at {vertices[bad[0]].tolist()}: coordinates must be finite")
 
 
-def stl_bytes(shape: Shape, scale: float, head: str) -> bytes:
-    """The binary STL file of a shape: coordinates times scale, rounded to float32 as the format wants."""
+def stl_bytes(vertices: np.ndarray, facets: np.ndarray, head: str) -> bytes:
+    """The binary STL file of a surface, coordinates rounded to float32 as the format wants."""
     import trimesh
 
-    mesh = trimesh.Trimesh(shape.vertices_m * scale, shape.facets, process=False)
+    mesh = trimesh.Trimesh(vertices, facets, process=False)
     data = mesh.export(file_type="stl")
     assert isinstance(data, bytes)
     line = head.splitlines()[0].encode("ascii")[:80] if head else b""
     return line.ljust(80) + data[80:]
 
 
-def ply_bytes(shape: Shape, scale: float, head: str) -> bytes:
-    """The binary PLY file of a shape: coordinates times scale, as float64 (trimesh would round to float32)."""
+def ply_bytes(vertices: np.ndarray, facets: np.ndarray, head: str) -> bytes:
+    """The binary PLY file of a surface, coordinates as float64 (trimesh would round to float32)."""
     comments = "".join(f"comment {line}\n" for line in head.splitlines())
     text = (
-        f"ply\nformat binary_little_endian 1.0\n{comments}element vertex {len(shape.vertices_m)}\n"
+        f"ply\nformat binary_little_endian 1.0\n{comments}element vertex {len(vertices)}\n"
         "property double x\nproperty double y\nproperty double z\n"
-        f"element face {len(shape.facets)}\nproperty list uchar int vertex_indices\nend_header\n"
+        f"element face {len(facets)}\nproperty list uchar int vertex_indices\nend_header\n"
     )
-    rows = np.empty(len(shape.facets), dtype=[("n", "u1"), ("corners", "<i4", (3,))])
-    rows["n"], rows["corners"] = 3, shape.facets
-    return text.encode("ascii") + (shape.vertices_m * scale).astype("<f8").tobytes() + rows.tobytes()
+    rows = np.empty(len(facets), dtype=[("n", "u1"), ("corners", "<i4", (3,))])
+    rows["n"], rows["corners"] = 3, facets
+    return text.encode("ascii") + vertices.astype("<f8").tobytes() + rows.tobytes()

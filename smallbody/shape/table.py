@@ -209,10 +209,10 @@ def _from_zero(
     return corners - base
 
 
-def table_bytes(shape: Shape, scale: float, head: str) -> bytes:
-    """The table of a shape: counts, vertices times scale, facets counted from 1, no row numbers."""
+def table_bytes(vertices: np.ndarray, facets: np.ndarray, head: str) -> bytes:
+    """The table of a surface: counts, vertices, facets counted from 1, no row numbers."""
     out = [f"# {line}" for line in head.splitlines()]
-    out.append(f"{len(shape.vertices_m)} {len(shape.facets)}")
-    out += [f"{x!r} {y!r} {z!r}" for x, y, z in (shape.vertices_m * scale).tolist()]
-    out += [f"{a} {b} {c}" for a, b, c in (shape.facets + 1).tolist()]
+    out.append(f"{len(vertices)} {len(facets)}")
+    out += [f"{x!r} {y!r} {z!r}" for x, y, z in vertices.tolist()]
+    out += [f"{a} {b} {c}" for a, b, c in (facets + 1).tolist()]
     return ("\n".join(out) + "\n").encode("ascii")
