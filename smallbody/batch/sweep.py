@@ -375,7 +375,8 @@ def _assemble(plan: Mapping[str, Any], segments: list[Stored]) -> dict[str, Quan
     def gridded(column: str, blank: Any, *at: int) -> np.ndarray:
         flat = np.full(math.prod(shape), blank, dtype=object if isinstance(blank, str) else float)
         if rows:
-            flat[rows["cell"].values] = rows[column].values[(slice(None), *at)]
+            index: Any = (slice(None), *at)
+            flat[rows["cell"].values] = rows[column].values[index]
         return flat.reshape(shape)
 
     def number(units: str, about: str, column: str, *at: int) -> Quantity:

@@ -103,7 +103,7 @@ def test_a_cell_that_fails_is_a_row_with_its_reason(engine):
     assert "6 of 12 cells failed; the first, spin.obliquity_deg = 90, surface.thermal_inertia = 50: facets" in str(
         said[0].message
     )
-    assert "2 of 12 cells have notes" in str(said[1].message)
+    assert "notes on 2 of 12 cells; the first: raise something" in str(said[1].message)
 
 
 def test_an_error_nobody_foresaw_is_a_row_too(engine):
