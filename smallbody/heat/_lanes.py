@@ -9,8 +9,9 @@ and runs in whatever vector registers the processor has (measured on both heat k
     store(t, i, x + 2.0 * y)       and back; + - * / between lanes, or lanes and a float
     spread(0.0), larger(x, y), smaller(x, y), size(x), root(x), any_above(x, limit), largest(x)
 
-NaN: `larger` and `smaller` return x where either is NaN; `any_above` counts NaN as above, so that a loop that waits for
-every lane to settle does not take NaN for an answer. With NUMBA_DISABLE_JIT the same names work on NumPy rows.
+NaN: `larger` and `smaller` return x where either is NaN; `any_above` counts NaN as above and `largest` returns it, so
+that a loop that waits for every lane to settle does not take NaN for an answer. With NUMBA_DISABLE_JIT the same names
+work on NumPy rows.
 """
 
 from __future__ import annotations
@@ -136,7 +137,10 @@ def _any_above(typing, x, limit):
 @intrinsic
 def _largest(typing, x):
     def code(context, builder, sig, args):
-        return _call(builder, "vector.reduce.fmax", args, ir.DoubleType())
+        bits = builder.bitcast(builder.fcmp_unordered("uno", args[0], args[0]), ir.IntType(LANES))
+        broken = builder.icmp_unsigned("!=", bits, ir.Constant(ir.IntType(LANES), 0))
+        found = _call(builder, "vector.reduce.fmax", args, ir.DoubleType())
+        return builder.select(broken, ir.Constant(ir.DoubleType(), float("nan")), found)
 
     return types.float64(x), code
 
@@ -170,7 +174,7 @@ if config.DISABLE_JIT:
     size = np.abs
     root = np.sqrt
     any_above = lambda x, limit: not np.all(x <= limit)  # noqa: E731
-    largest = np.fmax.reduce
+    largest = np.max
 else:
     spread, load, store, larger, smaller = _spread, _load, _store, _larger, _smaller
     size, root, any_above, largest = _size, _root, _any_above, _largest
