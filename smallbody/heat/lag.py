@@ -16,10 +16,9 @@ from smallbody.constants import SIGMA
 from smallbody.errors import NotSettled, SizeMismatch
 from smallbody.light import Places
 
-LANES = 16  # facets solved in lockstep
-TOL_K = 5e-4  # iteration ends when nothing moves by more: a few parts in a million of the temperature
+LANES = 16  # facets solved in lockstep, as in _lanes
+TOL_K = 1e-2  # rounds end when none moved a node by more; what is then left is about a ninth of it
 MOST_ROUNDS = 60
-MOST_SWEEPS = 200
 
 
 def rotation_weights(nodes: int, thermal_inertia: float, rate: float) -> np.ndarray:
@@ -111,29 +110,42 @@ class LagSolver:
         """
         from smallbody.heat._lag import _solve
 
-        p, n, lanes = absorbed_w_m2.shape
+        p, n, facets = absorbed_w_m2.shape
         if (p, n) != (len(self.places), self.nodes):
-            raise SizeMismatch(f"absorbed light is {p} places by {n} nodes, the solver {len(self.places)} by {self.nodes}")
-        t, means, out = np.zeros((p, n, lanes)), np.zeros((p, lanes)), np.zeros(3)
+            raise SizeMismatch(
+                f"absorbed light is {p} places by {n} nodes, the solver {len(self.places)} by {self.nodes}"
+            )
+        if facets > LANES:
+            raise SizeMismatch(f"absorbed light of {facets} facets; a block has at most {LANES}")
+        t, moments, out = np.zeros((p, n, LANES)), np.zeros((p, 5, LANES)), np.zeros(3)
         es = self.ground.emissivity * SIGMA
         _solve(
-            np.ascontiguousarray(absorbed_w_m2), self.weights, self.season, es, self.ground.thermal_inertia, TOL_K,
-            MOST_ROUNDS, MOST_SWEEPS, t, means, np.zeros((p, lanes)), *(np.zeros(lanes) for _ in range(8)), out,
+            _full_block(absorbed_w_m2), self.weights, self.season, self.season.sum(axis=0), es,
+            float(self.ground.thermal_inertia), TOL_K, MOST_ROUNDS, t, np.zeros((p, LANES)), moments,
+            np.zeros((p, LANES)), out,
         )  # fmt: skip
-        if not out[2] < TOL_K:
+        if not out[2] <= TOL_K:
             raise NotSettled(
                 f"temperatures still move by {out[2]:.2g} K after {int(out[0])} rounds; try other numbers of "
                 f"rotation nodes (now {n}) or orbit places (now {p})",
                 temperature_k=t, rounds=int(out[0]), worst_k=float(out[2]),
             )  # fmt: skip
-        return t, means
+        return t[:, :, :facets], moments[:, 0, :facets]
 
     def excess(self, temperature_k: np.ndarray, absorbed_w_m2: np.ndarray) -> np.ndarray:
         """What the ground emits beyond what it absorbs: mean over a rotation, and mean times cos and sin of the Sun's
         body longitude; (3, p, L) W/m2."""
         from smallbody.heat._lag import _excess
 
-        p, _, lanes = temperature_k.shape
-        out = np.empty((3, p, lanes))
-        _excess(temperature_k, absorbed_w_m2, self.ground.emissivity * SIGMA, out)
-        return out
+        p, _, facets = temperature_k.shape
+        out = np.empty((3, p, LANES))
+        _excess(_full_block(temperature_k), _full_block(absorbed_w_m2), self.ground.emissivity * SIGMA, out)
+        return out[:, :, :facets]
+
+
+def _full_block(table: np.ndarray) -> np.ndarray:
+    """A table of at most LANES facets (last axis) as the kernels want it: idle lanes repeat the last facet."""
+    idle = LANES - table.shape[-1]
+    if idle:
+        table = np.concatenate([table, np.repeat(table[..., -1:], idle, axis=-1)], axis=-1)
+    return np.ascontiguousarray(table)

@@ -99,7 +99,8 @@ def _block_sky(
 
     corners (f, 3, 3) m; normals (f, 3); heights (f,): n.x of each facet's plane, m; samples (f, s, 3): points, m;
     shifts (s,): meridian c of sample s stands at 2 pi (c + shifts[s])/columns; cosine, sine (s, c) of that angle;
-    slack: what lies lower over the facet's plane than this is not an obstacle, m. Out: low, high (b, s, c, MOST + 1) sin(latitude), counts (b, s, c).
+    slack: what lies lower over the facet's plane than this is not an obstacle, m.
+    Out: low, high (b, s, c, MOST + 2) sin(latitude), counts (b, s, c).
     """
     columns = cosine.shape[1]
     for f in range(start, end):
@@ -223,7 +224,7 @@ def _sees(sin_latitude, turns, shadowed_row, starts, low, high, shifts, columns,
                 continue
             seen = 0
             for s in range(s_count):
-                c = int(math.floor(turns[k] * columns - shifts[s] + 0.5)) % columns
+                c = math.floor(turns[k] * columns - shifts[s] + 0.5) % columns
                 at = (row * s_count + s) * columns + c
                 free = 1
                 for i in range(starts[at], starts[at + 1]):
@@ -232,5 +233,3 @@ def _sees(sin_latitude, turns, shadowed_row, starts, low, high, shifts, columns,
                         break
                 seen += free
             out[f, k] = seen / s_count
-
-

@@ -30,8 +30,8 @@ def _light_sums(
     """Add facets start..end to the sums over the surface at every place p.
 
     lambert (p, 3): sum of dA <mu n>; lever (p, 3): sum of dA <mu r x n>; across (p,): sum of dA <mu>;
-    lit_lever (p, 3): sum of dA <mu r> over the lit sample points; all in the frame where the Sun has no y. mean_mu (f,): orbit
-    mean of <mu> with the given weights (p,). by_latitude (p,): places in ascending order of sin_lat.
+    lit_lever (p, 3): sum of dA <mu r> over the lit sample points; all in the frame where the Sun has no y.
+    mean_mu (f,): mean of <mu> with the given weights (p,). by_latitude (p,): places in ascending order of sin_lat.
     """
     p_count = sin_lat.shape[0]
     s_count = shifts.shape[0]

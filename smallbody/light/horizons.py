@@ -46,7 +46,7 @@ class Horizons:
 
     @cached_property
     def overshadowed(self) -> np.ndarray:
-        """(f,) bool: does anything rise over the facet's own plane, so that it may lie in shadow while turned sunward?"""
+        """(f,) bool: does anything rise over the facet's own plane, so that it may be shaded while turned sunward?"""
         return np.asarray(self.rows >= 0)
 
     @property

@@ -6,7 +6,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from smallbody.constants import AU_M, GM_SUN, SUN_W
+from smallbody.constants import GM_SUN, SUN_W
 
 
 def eccentric_anomaly(mean_anomaly: np.ndarray | float, e: float) -> np.ndarray:

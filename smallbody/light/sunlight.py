@@ -41,8 +41,8 @@ def light_sums(
     """Sum the light over the surface at every place.
 
     weight : (p,) of the places, for mean_cosine
-    source : the means over a rotation of an unobstructed facet are integrated exactly (geometry); what is blocked is taken away
-        at the sample points and meridians of the horizons
+    source : the means over a rotation of an unobstructed facet are integrated exactly (geometry); what is blocked is
+        taken away at the sample points and meridians of the horizons
     """
     from smallbody.light._sunlight import _light_sums
 

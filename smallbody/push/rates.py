@@ -208,8 +208,8 @@ def drift(body: Body, *, shape: Shape | None = None, horizons: Horizons | None =
     meter : told of progress
     returns : Drift
     raises : ShapeError; SizeMismatch, if horizons do not fit; NotSettled
-    source : pressure of light and Lambert recoil; 1-D heat conduction below each facet; Gauss's equations; rotation about a
-        principal axis. Heat radiated by one facet onto another is not followed.
+    source : pressure of light and Lambert recoil; 1-D heat conduction below each facet; Gauss's equations; rotation
+        about a principal axis. Heat radiated by one facet onto another is not followed.
     """
     with warnings.catch_warnings(record=True) as caught:
         warnings.simplefilter("always", Note)
@@ -517,7 +517,9 @@ def _arrays(
         "heat_place_mean_anomaly_deg": Quantity(
             np.degrees(first.mean_anomaly), ("heat_place",), "deg", "where heat was solved"
         ),
-        "place_mean_anomaly_deg": Quantity(np.degrees(places.mean_anomaly), ("place",), "deg", "where light was summed"),
+        "place_mean_anomaly_deg": Quantity(
+            np.degrees(places.mean_anomaly), ("place",), "deg", "where light was summed"
+        ),
         "place_true_anomaly_deg": Quantity(np.degrees(places.true_anomaly), ("place",), "deg", "true anomaly"),
         "place_sun_distance_au": Quantity(places.distance_m / AU_M, ("place",), "au", "distance from the Sun"),
         "place_subsolar_latitude_deg": Quantity(
@@ -525,10 +527,10 @@ def _arrays(
         ),
         "place_weight": Quantity(places.weight, ("place",), "1", "share of the orbital period"),
         "force_n": Quantity(
-            np.stack([force[s] for s in SOURCES]), ("source", "place", "orbit_axis"), "N", "force, mean over a rotation"
+            np.stack([force[s] for s in SOURCES]), ("source", "place", "orbit_axis"), "N", "mean over a rotation"
         ),
         "torque_n_m": Quantity(
-            np.stack([torque[s] for s in SOURCES]), ("source", "place", "pole_axis"), "N m", "torque, mean over a rotation"
+            np.stack([torque[s] for s in SOURCES]), ("source", "place", "pole_axis"), "N m", "mean over a rotation"
         ),
     }  # fmt: skip
 

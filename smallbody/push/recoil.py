@@ -13,8 +13,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from smallbody.constants import C_M_S
-from smallbody.heat import LagSolver
-from smallbody.heat.lag import LANES
+from smallbody.heat import LANES, LagSolver
 from smallbody.light import Horizons, LightSums, Places, SunOnBody, lit_cosines, lit_latitudes
 from smallbody.shape import Shape
 from smallbody.workers import SILENT, Meter, share
@@ -86,8 +85,8 @@ def push_of_heat(
 ) -> HeatRun:
     """Solve the heat of all facets and sum what its delay does to force and torque.
 
-    Facets under an open sky share one table over the latitude of their normals (longitude is a phase); overshadowed ones
-    are solved each for itself.
+    Facets under an open sky share one table over the latitude of their normals (longitude is a phase); overshadowed
+    ones are solved each for itself.
     shown : place whose temperatures are kept
     """
     places = solver.places

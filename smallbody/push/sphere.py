@@ -57,9 +57,9 @@ def sphere_drift(
     """Linear theory of the Yarkovsky effect on a sphere.
 
     radius_m, density_kg_m3 (bulk), thermal_inertia (J m-2 K-1 s-1/2), period_h : of the body
-    heat_capacity_density : density times specific heat of the surface, J m-3 K-1; given, the heat wave may fill the body
-        (finite radius), else the body is large
-    e : the theory is for circular orbits; an eccentric one is replaced by the circular orbit with the same mean sunlight
+    heat_capacity_density : density times specific heat of the surface, J m-3 K-1; given, the heat wave may fill the
+        body (finite radius), else the body is large
+    e : the theory is for circular orbits; an eccentric one is replaced by the circular one with the same mean sunlight
     source : Vokrouhlicky 1998, 1999; review Bottke et al. 2006, Annu. Rev. Earth Planet. Sci. 34, 157
     """
     a = a_au * AU_M
