@@ -7,11 +7,13 @@ import textwrap
 from collections.abc import Mapping, Sequence
 from typing import TYPE_CHECKING, Any
 
+from smallbody.constants import AU_M, DAY_S, MYR_S
+
 if TYPE_CHECKING:
     from rich.table import Table
 
     from smallbody.body import Body
-    from smallbody.push import Drift
+    from smallbody.push import Drift, Rate
 
 WIDTH = 80
 ORBIT = {  # key of the result: what it is the rate of, unit
@@ -32,7 +34,7 @@ SPIN = {
 SOURCES = ("thermal", "scattered", "direct")
 ONCE = {"da_dt_m_per_yr", "doubling_time_myr"}  # the same thing in another unit: said once, not by source
 TOO_MUCH = 0.02
-ROUND_OFF = 1e-9  # of the natural scale of spin rates: what a symmetric body keeps of a torque that cancels
+ROUND_OFF = 1e-8  # of the natural scale of a rate: what is left of pushes that cancel
 
 
 def number_with_error(value: float, error: float, most_decimals: int = 6) -> str:
@@ -54,24 +56,30 @@ def number_with_error(value: float, error: float, most_decimals: int = 6) -> str
     return f"{value / scale:+.{decimals}f}{suffix} ± {abs(error) / scale:.{decimals}f}{suffix}"
 
 
-def number_in_brackets(value: float, error: float, size: float, most_decimals: int = 6) -> str:
+def number_in_brackets(value: float, error: float, size: float, nothing: float = 0.0, most_decimals: int = 6) -> str:
     """The same, short, as tables of constants have it: the digits in brackets are the error of the last digits.
 
     size : sets the exponent, so that what is small beside it looks small
+    nothing : what is smaller, error included, is 0
 
-    >>> number_in_brackets(-4.10312e-4, 1.23e-6, size=4e-4), number_in_brackets(1e-22, 1e-23, size=4e-4)
+    >>> number_in_brackets(-4.10312e-4, 1.23e-6, size=4e-4), number_in_brackets(1e-22, 0.0, size=4e-4)
     ('-4.103(12)e-4', '0')
     """
     if not math.isfinite(value):
         return "undefined"
-    if not math.isfinite(error) or size == 0.0 or abs(value) + abs(error) < 1e-9 * size:
-        return "0" if abs(value) <= 1e-9 * size else f"{value:+.3g}"
+    if not math.isfinite(error):
+        return f"{value:+.3g}"
+    if size == 0.0 or abs(value) + abs(error) <= nothing:
+        return "0"
     exponent = _exponent(size)
     scale, suffix = (1.0, "") if exponent == 0 else (10.0**exponent, f"e{exponent}")
     decimals = _decimals(size / scale, error / scale, most_decimals)
+    digits = f"{value / scale:+.{decimals}f}"
     last = round(abs(error) / scale * 10**decimals)
+    if last == 0 and float(digits) == 0.0:
+        return "0"
     bracket = f"{last}" if last < 100 or decimals == 0 else f"{abs(error) / scale:.{decimals}f}"
-    return f"{value / scale:+.{decimals}f}({bracket}){suffix}"
+    return f"{digits}({bracket}){suffix}"
 
 
 def _exponent(size: float) -> int:
@@ -109,21 +117,23 @@ def print_drift(body: Body, result: Drift, advice: Sequence[str] = ()) -> None:
 
     console = Console(highlight=False, emoji=False, markup=False)
     console.width = max(WIDTH, console.width)  # a number cut short would be another number
+    nothing = _nothing(body, result)
     with console.capture() as capture:
         console.print(Text(result.name, style="bold"))
         for text in _inputs(body, result):
             console.print(Text(text, style="dim"))
         console.print()
-        console.print(_totals(result))
+        console.print(_totals(result, nothing))
         console.print()
-        console.print(_by_source(result))
+        console.print(_by_source(result, nothing))
         console.print(Text("in brackets: error of the last digits", style="dim"))
         console.print()
         console.print(_beside(result))
-        if advice:
+        worth = _in_words(advice, result, nothing)
+        if worth:
             console.print()
             console.print(Text("Worth doing", style="bold yellow"))
-            for text in advice:
+            for text in worth:
                 console.print(textwrap.fill(text, WIDTH, initial_indent="  ", subsequent_indent="    "))
     text = "\n".join(row.rstrip() for row in capture.get().split("\n"))
     try:
@@ -133,16 +143,42 @@ def print_drift(body: Body, result: Drift, advice: Sequence[str] = ()) -> None:
     print(text, end="")
 
 
+def _in_words(advice: Sequence[str], result: Drift, nothing: Mapping[str, float]) -> list[str]:
+    """Advice with the rates called as in the table, none about a rate that is nothing but round-off."""
+    kept = []
+    for text in advice:
+        key, colon, rest = text.partition(":")
+        rate = getattr(result.orbit, key, None) or getattr(result.spin, key, None)
+        if rate is None:
+            kept.append(text)
+        elif not _is_nothing(rate, nothing[key]):
+            kept.append(f"{ {**ORBIT, **SPIN}[key][0] }{colon}{rest}")
+    return kept
+
+
 def _inputs(body: Body, result: Drift) -> list[str]:
     facts = result.provenance
     diameter, mass = facts.get("diameter_km", math.nan), facts.get("mass_kg", math.nan)
     surface, spin, orbit = body.surface, body.spin, body.orbit
     return [
-        f"{diameter:.4g} km across, {mass:.3g} kg, {result.checks.facets:,} facets; "
-        f"albedo {surface.bond_albedo:g}, emissivity {surface.emissivity:g}, Gamma {surface.thermal_inertia:g}",
-        f"turns in {spin.period_h:g} h, obliquity {math.degrees(body.obliquity):.4g} deg; "
+        f"{diameter:.4g} km across, {_few(mass)[1:]} kg, {result.checks.facets:,} facets",
+        f"albedo {surface.bond_albedo:g}, emissivity {surface.emissivity:g}, "
+        f"thermal inertia {surface.thermal_inertia:g} J m-2 K-1 s-1/2",
+        f"turns in {spin.period_h:g} h at obliquity {math.degrees(body.obliquity):.4g} deg; "
         f"orbit a {orbit.a_au:g} au, e {orbit.e:g}, i {orbit.i_deg:g} deg",
     ]
+
+
+def _nothing(body: Body, result: Drift) -> dict[str, float]:
+    """By rate, what is round-off: this part of what the push or the torque would do if none of it cancelled."""
+    push, spin_scale = result.acceleration, result.checks.spin_scale_rad_per_d2
+    a_au, days = body.orbit.a_au, MYR_S / DAY_S
+    accel = max(abs(push.a1_au_per_d2), abs(push.a2_au_per_d2), abs(push.a3_au_per_d2)) / a_au**2
+    orbit = ROUND_OFF * accel * days / (body.orbit.mean_motion * DAY_S * a_au)  # 1/Myr
+    turn = math.degrees(ROUND_OFF * spin_scale * days / (body.spin.rate * DAY_S))  # deg/Myr
+    nothing = dict.fromkeys(ORBIT, math.degrees(orbit)) | dict.fromkeys(SPIN, turn)
+    nothing |= {"da_dt_au_per_myr": orbit * a_au, "da_dt_m_per_yr": orbit * a_au * AU_M / 1e6, "de_dt_per_myr": orbit}
+    return nothing | {"domega_dt_rad_per_d2": ROUND_OFF * spin_scale, "doubling_time_myr": 0.0}
 
 
 def _table(*columns: tuple[str, Any]) -> Table:
@@ -154,25 +190,26 @@ def _table(*columns: tuple[str, Any]) -> Table:
     return table
 
 
-def _totals(result: Drift) -> Table:
+def _totals(result: Drift, nothing: Mapping[str, float]) -> Table:
     table = _table(("Mean rate of change", "left"), ("", "left"), ("unit", "left"), ("error", "right"))
     for heading, rates, labels in (("orbit", result.orbit, ORBIT), ("spin", result.spin, SPIN)):
         for key, (what, unit) in labels.items():
             rate = getattr(rates, key)
-            if key in ("domega_dt_rad_per_d2", "doubling_time_myr") and _no_spin_up(result):
-                shown, error = ("never", "") if key == "doubling_time_myr" else ("0 within round-off", "")
-            else:
-                shown = number_with_error(rate.value, rate.numerical_error)
-                error = share(abs(rate.numerical_error / rate.value) if rate.value else math.inf)
-            many = rate.value != 0 and abs(rate.numerical_error) > TOO_MUCH * abs(rate.value)
-            table.add_row(f"{heading:5}  {what}", shown, unit, _styled(error, "yellow" if many else ""))
+            part = abs(rate.numerical_error / rate.value) if rate.value else math.inf
+            shown, error = number_with_error(rate.value, rate.numerical_error), share(part)
+            if key == "doubling_time_myr":
+                shown = shown.lstrip("+")
+                if _is_nothing(result.spin.domega_dt_rad_per_d2, nothing["domega_dt_rad_per_d2"]):
+                    shown, error = "never", ""
+            elif _is_nothing(rate, nothing[key]):
+                shown, error = "0 within round-off", ""
+            table.add_row(f"{heading:5}  {what}", shown, unit, _styled(error, "yellow" if part > TOO_MUCH else ""))
             heading = ""
     return table
 
 
-def _no_spin_up(result: Drift) -> bool:
-    rate, scale = result.spin.domega_dt_rad_per_d2, result.checks.spin_scale_rad_per_d2
-    return abs(rate.value) + abs(rate.numerical_error) < ROUND_OFF * scale
+def _is_nothing(rate: Rate, nothing: float) -> bool:
+    return abs(rate.value) + abs(rate.numerical_error) <= nothing
 
 
 def _styled(text: str, style: str) -> Any:
@@ -181,7 +218,7 @@ def _styled(text: str, style: str) -> Any:
     return Text(text, style=style)
 
 
-def _by_source(result: Drift) -> Table:
+def _by_source(result: Drift, nothing: Mapping[str, float]) -> Table:
     table = _table(("By cause", "left"), *((source, "left") for source in SOURCES), ("unit", "left"))
     for part, labels in (("orbit", ORBIT), ("spin", SPIN)):
         for key, (what, unit) in labels.items():
@@ -189,9 +226,7 @@ def _by_source(result: Drift) -> Table:
                 continue
             rates = [getattr(getattr(result.by_source[source], part), key) for source in SOURCES]
             size = max((abs(r.value) for r in rates if math.isfinite(r.value)), default=0.0)
-            if key == "domega_dt_rad_per_d2" and size < ROUND_OFF * result.checks.spin_scale_rad_per_d2:
-                size = math.inf
-            shown = [number_in_brackets(rate.value, rate.numerical_error, size) for rate in rates]
+            shown = [number_in_brackets(r.value, r.numerical_error, size, nothing[key]) for r in rates]
             table.add_row(what, *shown, unit)
     return table
 
@@ -221,46 +256,46 @@ def _beside(result: Drift) -> Table:
 
 
 def _few(value: float, decimals: int = 2) -> str:
-    if not math.isfinite(value):
-        return "undefined"
+    if not math.isfinite(value) or value == 0.0:
+        return "+0" if value == 0.0 else "undefined"
     digits, _, exponent = f"{value:+.{decimals}e}".partition("e")
     return f"{digits}e{int(exponent)}"
 
 
-UNITS = {"_m5": "m5", "_m3": "m3", "_m2": "m2", "_km3": "km3", "_km2": "km2", "_km": "km", "_deg": "deg", "_m": "m"}
+def print_shape(name: str, facts: Mapping[str, Any], overshadowed: float, details: bool = False) -> None:
+    """Print what there is to know about a usable shape; with details, its principal axes and hash too."""
+    far = max(facts["extents_m"]) >= 10_000.0
+    unit, metres = ("km", 1000.0) if far else ("m", 1.0)
+
+    def size(sides: Sequence[float]) -> str:
+        return f"{' x '.join(f'{side / metres:.4g}' for side in sides)} {unit}"
+
+    off = math.hypot(*facts["centre_m"])
+    centre = ", ".join(f"{x / metres:.4g}" for x in facts["centre_m"])
+    tunnels = f", {facts['handles']} tunnels" if facts["handles"] else ""
+    edge = {key: f"{value / metres:.3g}" for key, value in facts["edge_m"].items()}
+    rows = {
+        "usable": "yes: closed, facets outwards",
+        "facets": f"{facts['facets']:,} on {facts['vertices']:,} vertices{tunnels}",
+        "diameter": f"{facts['diameter_m'] / metres:.4g} {unit}, of the sphere of the same volume",
+        "extents": f"{size(facts['extents_m'])} along x, y, z",
+        "": f"{size(facts['principal_extents_m'])} along the principal axes",
+        "volume, area": f"{_few(facts['volume_m3'], 3)[1:]} m3, {_few(facts['area_m2'], 3)[1:]} m2",
+        "centre of mass": "at the origin" if off < 1e-4 * facts["diameter_m"] else f"at {centre} {unit}",
+        "moments": f"{', '.join(_few(x, 3)[1:] for x in facts['moments_m5'])} m5 for unit density",
+        "moment ratios": f"{_listed(facts['moment_ratios'])} of the lower two to the greatest",
+        "spin axis": f"z is {facts['spin_tilt_deg']:.2g} deg from the axis of greatest moment",
+        "edges": f"{edge['min']} to {edge['max']} {unit}, median {edge['median']} {unit}, "
+        f"smallest angle {facts['smallest_angle_deg']:.2g} deg",
+        "overshadowed": f"{share(overshadowed)} of the facets have something above their horizon",
+    }
+    if details:
+        for axis, about in zip(facts["axes"], ("least", "middle", "greatest")):
+            rows[f"axis of {about}"] = ", ".join(f"{x:+.6f}" for x in axis)
+        rows["sha256"] = facts["sha256"]
+    widest = max(map(len, rows))
+    print("\n".join([name, *(f"  {label:{widest}}  {fact}" for label, fact in rows.items())]))
 
 
-def print_facts(name: str, facts: Mapping[str, Any]) -> None:
-    """Print what is known of a shape, a line for each fact; the unit is what the fact's name ends in."""
-    rows = [(_label(key), _fact(key, value)) for key, value in facts.items()]
-    widest = max(len(label) for label, _ in rows)
-    lines = [name, *(f"  {label:{widest}}  {fact}" for label, fact in rows)]
-    print("\n".join(line.rstrip() for line in lines))
-
-
-def _unit(key: str) -> str:
-    return next((ending for ending in UNITS if key.endswith(ending)), "")
-
-
-def _label(key: str) -> str:
-    return key.removesuffix(_unit(key)).removesuffix("_fraction").replace("_", " ")
-
-
-def _fact(key: str, value: Any) -> str:
-    unit = UNITS.get(_unit(key), "")
-    if key.endswith("_fraction"):
-        return share(float(value))
-    if isinstance(value, Mapping):
-        return ", ".join(f"{_label(k)} {_fact(k, v)}" for k, v in value.items())
-    if isinstance(value, str):
-        return value
-    if hasattr(value, "tolist"):
-        value = value.tolist()
-    if isinstance(value, bool):
-        return "yes" if value else "no"
-    if isinstance(value, int):
-        return f"{value:,} {unit}".strip()
-    if isinstance(value, (list, tuple)):
-        join = " x " if "extent" in key else ", "
-        return f"{join.join(_fact('', one) for one in value)} {unit}".strip()
-    return f"{value:.6g} {unit}".strip() if isinstance(value, float) else str(value)
+def _listed(values: Sequence[float]) -> str:
+    return ", ".join(f"{value:.4g}" for value in values)

@@ -138,9 +138,10 @@ def _write(ctx: click.Context, shape: Shape, out: Path, length_unit: str) -> Non
 
 def _print_look(ctx: click.Context, name: str, shape: Shape) -> None:
     """What a shape is, and how much of it lies in its own shadow at times."""
-    from smallbody.cli.report import print_facts
+    from smallbody.cli.report import print_shape
     from smallbody.light import horizons_of
     from smallbody.shape import describe
 
-    sky = horizons_of(shape, columns=64, lit_samples=1, meter=talk_of(ctx).meter())
-    print_facts(name, describe(shape) | {"overshadowed_fraction": sky.overshadowed_fraction})
+    talk = talk_of(ctx)
+    sky = horizons_of(shape, columns=64, lit_samples=1, meter=talk.meter())
+    print_shape(name, describe(shape), sky.overshadowed_fraction, details=talk.loudness > 0)

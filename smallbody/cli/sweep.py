@@ -9,6 +9,7 @@ import click
 
 from smallbody.cli.inputs import grid, writable
 from smallbody.cli.talk import common, talk_of
+from smallbody.errors import SmallbodyError
 
 
 @click.command(name="sweep")
@@ -34,18 +35,26 @@ def command(
     \b
       smallbody sweep runs/pebble.toml --over spin.obliquity_deg=0:180:15 --out s.h5
     """
+    from numpy import nanmax, nanmin
+
     from smallbody.body import read_body
 
     talk = talk_of(ctx)
     over = grid("--over", specifications)
     body = read_body(run, changes)
+    first = {key: values[0] for key, values in over.items()}
     for key, values in over.items():
         for value in values:
-            body.changed({key: value})  # a value that is not allowed is better known now than at the last cell
+            body.changed({**first, key: value})  # better known now than at the last cell
     writable("--out", out)
 
     from smallbody.batch import sweep
 
-    talk.say(f"{prod(map(len, over.values()))} cells", 1)
-    sweep(body, over, out=out, meter=talk.meter())
+    cells = prod(map(len, over.values()))
+    talk.say(f"{cells} cells", 1)
+    result = sweep(body, over, out=out, meter=talk.meter())
+    if len(result.failed) == cells:
+        raise SmallbodyError(f"all {cells} cells failed: {result.failed[0][1]}")
+    rates = result.arrays["da_dt_au_per_myr"].values
+    talk.say(f"{cells} cells, da/dt from {nanmin(rates):+.3g} to {nanmax(rates):+.3g} au/Myr")
     click.echo(out)
