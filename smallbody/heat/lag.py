@@ -120,7 +120,7 @@ class LagSolver:
         t, moments, out = np.zeros((p, n, LANES)), np.zeros((p, 5, LANES)), np.zeros(3)
         es = self.ground.emissivity * SIGMA
         _solve(
-            _full_block(absorbed_w_m2), self.weights, self.season, self.season.sum(axis=0), es,
+            full_block(absorbed_w_m2), self.weights, self.season, self.season.sum(axis=0), es,
             float(self.ground.thermal_inertia), TOL_K, MOST_ROUNDS, t, np.zeros((p, LANES)), moments,
             np.zeros((p, LANES)), out,
         )  # fmt: skip
@@ -139,11 +139,11 @@ class LagSolver:
 
         p, _, facets = temperature_k.shape
         out = np.empty((3, p, LANES))
-        _excess(_full_block(temperature_k), _full_block(absorbed_w_m2), self.ground.emissivity * SIGMA, out)
+        _excess(full_block(temperature_k), full_block(absorbed_w_m2), self.ground.emissivity * SIGMA, out)
         return out[:, :, :facets]
 
 
-def _full_block(table: np.ndarray) -> np.ndarray:
+def full_block(table: np.ndarray) -> np.ndarray:
     """A table of at most LANES facets (last axis) as the kernels want it: idle lanes repeat the last facet."""
     idle = LANES - table.shape[-1]
     if idle:

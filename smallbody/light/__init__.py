@@ -1,5 +1,6 @@
 """Light: who sees the Sun, and what sunlight reaches the facets."""
 
+from smallbody.light.course import Course, course, lit_on_course, whole_rotations
 from smallbody.light.horizons import Horizons, horizons_of, no_shadows
 from smallbody.light.sun import (
     Places,
@@ -15,15 +16,18 @@ from smallbody.light.sun import (
 from smallbody.light.sunlight import LightSums, light_sums, lit_cosines, lit_latitudes
 
 __all__ = [
+    "Course",
     "Horizons",
     "LightSums",
     "Places",
     "SunOnBody",
+    "course",
     "eccentric_anomaly",
     "horizons_of",
     "light_sums",
     "lit_cosines",
     "lit_latitudes",
+    "lit_on_course",
     "no_shadows",
     "places_at",
     "places_between",
@@ -31,4 +35,5 @@ __all__ = [
     "pole_vector",
     "sun_on_body",
     "true_anomaly",
+    "whole_rotations",
 ]

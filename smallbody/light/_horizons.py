@@ -209,27 +209,28 @@ def _pack(counts, low, high, offsets, out_low, out_high):
 
 
 @njit(cache=True, nogil=True)
-def _sees(sin_latitude, turns, shadowed_row, starts, low, high, shifts, columns, out):
-    """Share of each facet's samples that see a Sun at the directions given; between meridians the nearer one counts.
-
-    sin_latitude, turns (k,): Sun's place on the body's sky, longitude in turns; shadowed_row (f,): row or -1;
-    starts (rows*s*columns + 1,): where a meridian's intervals begin. Out: (f, k).
-    """
+def _share_that_sees(sin_latitude, turns, row, starts, low, high, shifts, columns):
+    """Share of the samples of one row that see a Sun at this latitude and longitude; the nearest meridian answers."""
     s_count = shifts.shape[0]
+    seen = 0
+    for s in range(s_count):
+        c = math.floor(turns * columns - shifts[s] + 0.5) % columns
+        at = (row * s_count + s) * columns + c
+        free = 1
+        for i in range(starts[at], starts[at + 1]):
+            if low[i] < sin_latitude < high[i]:
+                free = 0
+                break
+        seen += free
+    return seen / s_count
+
+
+@njit(cache=True, nogil=True)
+def _sees(sin_latitude, turns, rows, starts, low, high, shifts, columns, out):
+    """Share of each facet's samples that see the Sun, (f, k); sin_latitude, turns (k,): longitude in turns;
+    rows (f,): row or -1; starts (rows*s*columns + 1,): where a meridian's intervals begin."""
     for f in range(out.shape[0]):
-        row = shadowed_row[f]
         for k in range(out.shape[1]):
-            if row < 0:
-                out[f, k] = 1.0
-                continue
-            seen = 0
-            for s in range(s_count):
-                c = math.floor(turns[k] * columns - shifts[s] + 0.5) % columns
-                at = (row * s_count + s) * columns + c
-                free = 1
-                for i in range(starts[at], starts[at + 1]):
-                    if low[i] < sin_latitude[k] < high[i]:
-                        free = 0
-                        break
-                seen += free
-            out[f, k] = seen / s_count
+            out[f, k] = 1.0
+            if rows[f] >= 0:
+                out[f, k] = _share_that_sees(sin_latitude[k], turns[k], rows[f], starts, low, high, shifts, columns)

@@ -11,6 +11,8 @@ import math
 import numpy as np
 from numba import njit
 
+from smallbody.light._horizons import _share_that_sees
+
 
 @njit(cache=True, nogil=True, inline="always")
 def _day(a, b):
@@ -129,3 +131,20 @@ def _lit(facets, normals, rows, starts, low, high, shifts, columns, sin_lat, cos
                                 break
                     if free:
                         out[p, j, l] += mu / s_count
+
+
+@njit(cache=True, nogil=True)
+def _lit_steps(facets, normals, rows, starts, low, high, shifts, columns, sin_lat, cos_lat, turns, out):
+    """mu of the facets given at every step of a course, out (n, L): facet l = facets[l]."""
+    for k in range(turns.shape[0]):
+        angle = 2.0 * math.pi * turns[k]
+        ux, uy, uz = cos_lat[k] * math.cos(angle), cos_lat[k] * math.sin(angle), sin_lat[k]
+        for l in range(facets.shape[0]):
+            f = facets[l]
+            mu = normals[f, 0] * ux + normals[f, 1] * uy + normals[f, 2] * uz
+            if mu <= 0.0:
+                out[k, l] = 0.0
+            elif rows[f] < 0:
+                out[k, l] = mu
+            else:
+                out[k, l] = mu * _share_that_sees(uz, turns[k], rows[f], starts, low, high, shifts, columns)

@@ -18,6 +18,7 @@ from smallbody.light import (
     Horizons,
     Places,
     SunOnBody,
+    course,
     horizons_of,
     light_sums,
     no_shadows,
@@ -25,9 +26,10 @@ from smallbody.light import (
     places_in_true_anomaly,
     pole_vector,
     sun_on_body,
+    whole_rotations,
 )
 from smallbody.push.gauss import ORBIT_UNITS, SPIN_UNITS, element_rates, mean_coefficients, spin_rates
-from smallbody.push.recoil import HeatRun, Push, push_of_heat, push_of_light
+from smallbody.push.recoil import HeatRun, Push, push_of_course, push_of_heat, push_of_light
 from smallbody.push.result import SOURCES, Acceleration, Checks, Drift, OrbitRates, Rate, SourceRates, SpinRates
 from smallbody.push.sphere import SphereDrift, sphere_drift
 from smallbody.quantity import Quantity
@@ -152,19 +154,67 @@ def _light(world: _World, horizons: Horizons, count: int, meter: Meter) -> _Ligh
     )
 
 
-def _heat(
-    world: _World, horizons: Horizons, count: int, meter: Meter, shown: int | None = None
-) -> tuple[_Seen, HeatRun]:
+@dataclass(frozen=True)
+class _Heat:
+    """What the delay of the heat pushes, as the rates want it and (`drawn`) at the heat's places."""
+
+    seen: _Seen
+    drawn: _Seen
+    run: HeatRun
+    shown_turns: np.ndarray  # body longitude of the Sun at the instants whose temperatures are kept
+
+    @property
+    def gained_w(self) -> float:
+        """Mean power emitted beyond what is absorbed."""
+        return float(self.seen.places.weight @ self.run.excess_w)
+
+
+def _heat(world: _World, horizons: Horizons, count: int, meter: Meter, *, steps: int = 0, keep: bool = False) -> _Heat:
+    """Solve the heat: on two clocks at `count` places, or step by step through whole orbits where that must be.
+
+    steps : in a rotation, of the marching reference; 0 for the lag solver
+    """
     orbit = world.body.orbit
     places = places_between(orbit.a_au * AU_M, orbit.e, count)
+    if steps or world.body.rotations_per_orbit < SLOW_ROTATIONS:
+        return _heat_on_course(world, horizons, places, meter, steps, keep)
     sun = world.sun(places)
     most = MOST_ASCENSION * world.omega
     rates = world.omega - np.clip(sun.ascension_rate, -most, most)
     solver = LagSolver(world.ground, places, horizons.columns, rates)
-    run = push_of_heat(
-        world.shape, horizons, solver, sun, world.body.surface.bond_albedo, shown=shown, meter=meter
+    albedo = world.body.surface.bond_albedo
+    run = push_of_heat(world.shape, horizons, solver, sun, albedo, shown=0 if keep else None, meter=meter)
+    seen = _resolve(run.push, places, world)
+    return _Heat(seen, seen, run, -np.arange(horizons.columns) / horizons.columns)
+
+
+def _heat_on_course(world: _World, horizons: Horizons, places: Places, meter: Meter, steps: int, keep: bool) -> _Heat:
+    orbit, nodes = world.body.orbit, horizons.columns
+    if steps:
+        orbits, rotations = whole_rotations(world.body.rotations_per_orbit, 1)
+        n = steps * max(rotations, 1)
+    else:
+        orbits, rotations = whole_rotations(world.body.rotations_per_orbit)
+        n = nodes * rotations
+    n = max(n, int(orbits * nodes * np.sqrt(1 + orbit.e) / (1 - orbit.e) ** 1.5))  # perihelion is passed quickly
+    way = course(places.a_m, orbit.e, world.body.obliquity, world.body.pole_azimuth, orbits, rotations, n)
+    # which place a step is nearest to
+    m = places.mean_anomaly
+    middle = 0.5 * (m + np.append(m[1:], m[0] + 2 * np.pi))
+    bins = np.searchsorted(middle, np.mod(way.places.mean_anomaly, 2 * np.pi)) % len(m)
+    shown = np.round(np.arange(nodes) * n / (nodes * rotations)).astype(int) % n if keep else None
+    run = push_of_course(
+        world.shape, horizons, way, world.ground, world.body.surface.bond_albedo, bins,
+        march=steps > 0, shown=shown, meter=meter,
     )  # fmt: skip
-    return _resolve(run.push, places, world), run
+    seen = _resolve(run.push, way.places, world)
+    per = np.bincount(bins, minlength=len(m))[:, None]
+    force, torque = (
+        np.stack([np.bincount(bins, x[:, k], minlength=len(m)) for k in range(3)], axis=1) / np.maximum(per, 1)
+        for x in (seen.force, seen.torque)
+    )
+    turns = way.turns[shown] if shown is not None else way.turns[:0]
+    return _Heat(seen, _Seen(places, force, torque), run, turns)
 
 
 Table = dict[str, dict[str, float]]  # source or "total" -> rate -> value
@@ -250,22 +300,25 @@ def _drift(body: Body, shape: Shape | None, horizons: Horizons | None, meter: Me
 
     light = _light(world, horizons, light_places, meter)
     clock.lap("light")
-    lag, run = _heat(world, horizons, heat_places, meter, shown=0)
+    steps = solver.march_steps if solver.method == "march" else 0
+    heat = _heat(world, horizons, heat_places, meter, steps=steps, keep=True)
     clock.lap("heat")
-    fine, coefficients = _rates(world, light, lag)
+    fine, coefficients = _rates(world, light, heat.seen)
 
     thin = horizons.thinned() if solver.shadows else no_shadows(shape, nodes // 2)
     light_thin = _light(world, thin, light_places, meter)
-    lag_thin, _ = _heat(world, thin, heat_places, meter)
-    fewer, coefficients_thin = _rates(world, light_thin, lag_thin)
+    heat_thin = _heat(world, thin, heat_places, meter, steps=steps // 2)
+    fewer, coefficients_thin = _rates(world, light_thin, heat_thin.seen)
     light_half = _light(world, horizons, light_places // 2, meter)
-    lag_half, _ = _heat(world, horizons, heat_places // 2, meter)
-    sparser, coefficients_half = _rates(world, light_half, lag_half)
+    # step by step there are no places of the heat to halve
+    two_clocks = not steps and body.rotations_per_orbit >= SLOW_ROTATIONS
+    heat_half = _heat(world, horizons, heat_places // 2, meter) if two_clocks else heat
+    sparser, coefficients_half = _rates(world, light_half, heat_half.seen)
     coarser = {"rotation_nodes": fewer, "orbit_places": sparser}
     spread = [coefficients_thin - coefficients, coefficients_half - coefficients]
     if len(horizons.shifts) > 1 and horizons.overshadowed.any():
         light_few = _light(world, horizons.sampled_coarser(), light_places, meter)
-        coarser["lit_samples"], other = _rates(world, light_few, lag)
+        coarser["lit_samples"], other = _rates(world, light_few, heat.seen)
         spread.append(other - coefficients)
     errors, by_cause = _errors(fine, coarser)
     clock.lap("coarser repeats")
@@ -277,7 +330,7 @@ def _drift(body: Body, shape: Shape | None, horizons: Horizons | None, meter: Me
 
     scale = _spin_scale(world)
     checks = Checks(
-        energy_balance=_balance(run, lag.places, light),
+        energy_balance=heat.gained_w / light.absorbed_w if light.absorbed_w else 0.0,
         facets=len(shape.facets),
         overshadowed_fraction=horizons.overshadowed_fraction,
         rotations_per_orbit=body.rotations_per_orbit,
@@ -324,7 +377,7 @@ def _drift(body: Body, shape: Shape | None, horizons: Horizons | None, meter: Me
         },
         sphere=line,
         notes=tuple(_advice(world, fine["total"], by_cause, errors["total"], halved)),
-        arrays=_arrays(world, horizons, light, lag, run, fine, errors),
+        arrays=_arrays(world, horizons, light, heat, fine, errors),
     )
 
 
@@ -360,10 +413,6 @@ def _spin_scale(world: _World) -> float:
     return flux / C_M_S * (world.shape.diameter_m / 2) ** 3 / world.moment * DAY_S**2
 
 
-def _balance(run: HeatRun, places: Places, light: _Light) -> float:
-    return float(places.weight @ run.excess_w) / light.absorbed_w if light.absorbed_w else 0.0
-
-
 def _sphere(world: _World) -> SphereDrift:
     b = world.body
     volume = world.shape.mass.volume_m3
@@ -391,8 +440,8 @@ def _halved(
     other = _world(world.body, half)
     solver = world.body.solver
     horizons = horizons_of(half, nodes, solver.lit_samples, meter=meter) if solver.shadows else no_shadows(half, nodes)
-    lag, _ = _heat(other, horizons, heat_places, meter)
-    rates, _ = _rates(other, _light(other, horizons, light_places, meter), lag)
+    heat = _heat(other, horizons, heat_places, meter)
+    rates, _ = _rates(other, _light(other, horizons, light_places, meter), heat.seen)
     return {k: abs(rates["total"][k] - full[k]) for k in full}
 
 
@@ -451,23 +500,22 @@ def _advice(
 
 
 def _arrays(
-    world: _World, horizons: Horizons, light: _Light, lag: _Seen, run: HeatRun, fine: Table, errors: Table
+    world: _World, horizons: Horizons, light: _Light, heat: _Heat, fine: Table, errors: Table
 ) -> dict[str, Quantity]:
     shape = world.shape
     places = light.seen["direct"].places
     sun = world.sun(places)
-    n = horizons.columns
-    from smallbody.light import lit_cosines
-
-    first = lag.places
-    one = SunOnBody(*(x[:1] for x in _sun_fields(world.sun(first))))
-    absorbed = np.empty((len(shape.facets), n), np.float32)
+    first = heat.drawn.places
+    turns = heat.shown_turns
+    u = np.stack([np.cos(2 * np.pi * turns), np.sin(2 * np.pi * turns)], axis=1) * world.sun(first).cos_latitude[0]
+    u = np.concatenate([u, np.full((len(u), 1), world.sun(first).sin_latitude[0])], axis=1)
     strength = first.flux_w_m2[0] * (1 - world.body.surface.bond_albedo)
-    for start in range(0, len(shape.facets), 4096):
-        facets = np.arange(start, min(start + 4096, len(shape.facets)))
-        absorbed[facets] = (lit_cosines(shape, horizons, one, facets)[0] * strength).T
+    absorbed = np.empty((len(shape.facets), len(u)), np.float32)
+    for start in range(0, len(u), 16):
+        part = slice(start, start + 16)
+        absorbed[:, part] = np.maximum(0.0, shape.normals @ u[part].T) * horizons.sees(u[part]) * strength
     # the delay of the heat is solved at fewer places: its push is carried to the light's places by a periodic spline
-    late = _between(lag, places)
+    late = _between(heat.drawn, places)
     force = {
         "thermal": light.seen["absorbed"].force + late[0],
         "scattered": light.seen["scattered"].force,
@@ -502,17 +550,17 @@ def _arrays(
             horizons.overshadowed.astype(np.int8), ("facet",), "1", "something rises over the facet's own plane"
         ),
         "subsolar_longitude_deg": Quantity(
-            -360.0 * np.arange(n) / n, ("rotation",), "deg", "body longitude of the Sun, in the order of time"
+            np.degrees(np.unwrap(2 * np.pi * turns)), ("rotation",), "deg", "body longitude of the Sun, in time order"
         ),
         "facet_absorbed_w_m2": Quantity(absorbed, ("facet", "rotation"), "W/m2", "absorbed sunlight at perihelion"),
         "facet_temperature_k": Quantity(
-            run.temperature_k, ("facet", "rotation"), "K", "surface temperature at perihelion"
+            heat.run.temperature_k, ("facet", "rotation"), "K", "surface temperature at perihelion"
         ),
         "facet_mean_absorbed_w_m2": Quantity(
             light.mean_absorbed_w_m2, ("facet",), "W/m2", "absorbed sunlight, mean over the orbit"
         ),
         "facet_mean_temperature_k": Quantity(
-            run.mean_temperature_k, ("facet", "heat_place"), "K", "surface temperature, mean over a rotation"
+            heat.run.mean_temperature_k, ("facet", "heat_place"), "K", "surface temperature, mean over a rotation"
         ),
         "heat_place_mean_anomaly_deg": Quantity(
             np.degrees(first.mean_anomaly), ("heat_place",), "deg", "where heat was solved"
@@ -533,10 +581,6 @@ def _arrays(
             np.stack([torque[s] for s in SOURCES]), ("source", "place", "pole_axis"), "N m", "mean over a rotation"
         ),
     }  # fmt: skip
-
-
-def _sun_fields(sun: SunOnBody) -> tuple[np.ndarray, ...]:
-    return sun.sin_latitude, sun.cos_latitude, sun.axes, sun.ascension_rate
 
 
 def _between(lag: _Seen, places: Places) -> tuple[np.ndarray, np.ndarray]:

@@ -7,14 +7,24 @@ the mean over a rotation of a flux q times v needs of q nothing but <q> and <q e
 
 from __future__ import annotations
 
+import threading
 from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
 
-from smallbody.constants import C_M_S
-from smallbody.heat import LANES, LagSolver
-from smallbody.light import Horizons, LightSums, Places, SunOnBody, lit_cosines, lit_latitudes
+from smallbody.constants import C_M_S, SIGMA
+from smallbody.heat import LANES, Ground, LagSolver, lag_period, march_period
+from smallbody.light import (
+    Course,
+    Horizons,
+    LightSums,
+    Places,
+    SunOnBody,
+    lit_cosines,
+    lit_latitudes,
+    lit_on_course,
+)
 from smallbody.shape import Shape
 from smallbody.workers import SILENT, Meter, share
 
@@ -135,6 +145,63 @@ def push_of_heat(
     scale = -2 / 3 / C_M_S
     push = Push(*(np.einsum("pk,pkx->px", scale * x, sun.axes) for x in (lambert, arm)))
     return HeatRun(push, power, temperature, means)
+
+
+def push_of_course(
+    shape: Shape,
+    horizons: Horizons,
+    way: Course,
+    ground: Ground,
+    bond_albedo: float,
+    bins: np.ndarray,
+    *,
+    march: bool,
+    shown: np.ndarray | None = None,
+    meter: Meter = SILENT,
+) -> HeatRun:
+    """The same step by step through whole orbits, every facet for itself; Push and excess_w are of all n steps.
+
+    march : by the depth-marching reference, else by the lag solver for long periods
+    bins : (n,) int, which of the places 0 to max(bins) a step's temperature counts for in mean_temperature_k
+    shown : steps whose temperatures are kept
+    """
+    n, f = len(way.turns), len(shape.facets)
+    count = int(bins.max()) + 1
+    flux = way.places.flux_w_m2[:, None] * (1 - bond_albedo)
+    es = ground.emissivity * SIGMA
+    vectors = np.concatenate([shape.normals, lever_arms(shape), np.ones((f, 1))], axis=1) * shape.areas_m2[:, None]
+    by_bin = np.argsort(bins, kind="stable")
+    first = np.searchsorted(bins[by_bin], np.arange(count))
+    per_bin = np.bincount(bins, minlength=count)
+    keep = shown is not None
+    temperature = np.empty((f if keep else 0, len(shown) if shown is not None else 0), np.float32)
+    means = np.empty((f if keep else 0, count), np.float32)
+    lock = threading.Lock()
+    waiting: dict[int, np.ndarray] = {}
+    total = np.zeros((n, 7))
+    done = [0]
+
+    def work(start: int, end: int) -> None:
+        facets = np.arange(start, end)
+        light = lit_on_course(shape, horizons, way, facets) * flux
+        if march:
+            t = march_period(ground, way.period_s, light, fast_rate=way.rate, threads=1)
+        else:
+            t = lag_period(ground, way.period_s, light, threads=1)
+        part = (es * t**4 - light) @ vectors[facets]
+        with lock:
+            waiting[start] = part
+            while done[0] in waiting:  # in the order of the facets, so that sums are the same to the last bit
+                np.add(total, waiting.pop(done[0]), out=total)
+                done[0] += LANES
+        if shown is not None:
+            temperature[facets] = t[shown].T
+            means[facets] = (np.add.reduceat(t[by_bin], first, axis=0) / per_bin[:, None]).T
+
+    share(work, f, LANES, meter=meter, task="marching" if march else "heat of long periods")
+    scale = -2 / 3 / C_M_S
+    push = Push(*(np.einsum("nk,nkx->nx", scale * x, way.frame) for x in (total[:, :3], total[:, 3:6])))
+    return HeatRun(push, total[:, 6], temperature, means)
 
 
 def _stack(turned: np.ndarray, mean: np.ndarray, v: np.ndarray) -> np.ndarray:
