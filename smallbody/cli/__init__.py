@@ -6,7 +6,6 @@ One module per command, imported when the command is run; what a command needs i
 from __future__ import annotations
 
 import importlib
-import os
 import sys
 from collections.abc import Sequence
 from typing import Any
@@ -69,7 +68,11 @@ class OneLine(click.Group):
                 click.echo("smallbody: not enough memory for this many facets, nodes and places", err=True)
                 raise click.exceptions.Exit(2) from None
             except (click.ClickException, click.exceptions.Exit, click.Abort, BrokenPipeError):
-                raise
+                raise  # click's own: a pipe that its reader closed ends quietly
+            except OSError as error:  # a full disk behind stdout, say
+                what = f"{error.filename}: " if error.filename else ""
+                click.echo(f"smallbody: {what}{error.strerror or error}", err=True)
+                raise click.exceptions.Exit(2) from None
             except Exception as error:
                 if talk_of(ctx).loudness > 0:
                     import traceback
@@ -91,16 +94,16 @@ class OneLine(click.Group):
         try:
             code = super().main(args, prog_name, complete_var, standalone_mode=False, **extra)
         except click.ClickException as error:
+            code = 2
+            if type(error).__name__ == "NoArgsIsHelpError":  # a name that click 8.1 does not have
+                click.echo(error.format_message())
+                sys.exit(code)
             command = error.ctx.command_path if isinstance(error, click.UsageError) and error.ctx else ""
             hint = f" ({command} --help tells more)" if command else ""
             click.echo(f"smallbody: {' '.join(error.format_message().split())}{hint}", err=True)
-            code = 2
         except click.Abort:
             click.echo("smallbody: interrupted", err=True)
             code = INTERRUPTED
-        except BrokenPipeError:  # whoever read our output has gone; say nothing, also when Python closes stdout
-            os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
-            code = 1
         code = code if isinstance(code, int) else 0
         if standalone_mode:
             sys.exit(code)
@@ -116,10 +119,9 @@ def cli() -> None:
     A body is described in a TOML file; its shape comes from a facet file, or is made here.
 
     \b
-      smallbody shape make top --facets 2000 --out pebble.obj
-      smallbody shape pebble.obj
-      smallbody drift runs/pebble.toml --out pebble.h5
-      smallbody figure pebble.h5 --out pebble.png
+      smallbody shape shapes/thimble.obj
+      smallbody drift runs/thimble.toml --out thimble.h5
+      smallbody figure thimble.h5 --out thimble.png
     """
 
 

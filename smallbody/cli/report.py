@@ -7,6 +7,8 @@ import textwrap
 from collections.abc import Mapping, Sequence
 from typing import TYPE_CHECKING, Any
 
+import click
+
 from smallbody.constants import AU_M, DAY_S, MYR_S
 
 if TYPE_CHECKING:
@@ -140,7 +142,7 @@ def print_drift(body: Body, result: Drift, advice: Sequence[str] = ()) -> None:
         text.encode(console.encoding or "ascii")
     except UnicodeEncodeError:
         text = text.replace("±", "+-").encode("ascii", "replace").decode()
-    print(text, end="")
+    click.echo(text, nl=False)
 
 
 def _in_words(advice: Sequence[str], result: Drift, nothing: Mapping[str, float]) -> list[str]:
@@ -294,7 +296,7 @@ def print_shape(name: str, facts: Mapping[str, Any], overshadowed: float, detail
             rows[f"axis of {about}"] = ", ".join(f"{x:+.6f}" for x in axis)
         rows["sha256"] = facts["sha256"]
     widest = max(map(len, rows))
-    print("\n".join([name, *(f"  {label:{widest}}  {fact}" for label, fact in rows.items())]))
+    click.echo("\n".join([name, *(f"  {label:{widest}}  {fact}" for label, fact in rows.items())]))
 
 
 def _listed(values: Sequence[float]) -> str:

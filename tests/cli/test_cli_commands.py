@@ -110,6 +110,10 @@ def test_every_command_takes_the_common_options(call):
         assert all(option in text for option in ("-v, --verbose", "-q, --quiet", "--threads N"))
 
 
+def test_no_words_at_all_show_the_help(call):
+    assert call().stdout == call("--help").stdout
+
+
 # --- drift ------------------------------------------------------------------------------------------------------
 def test_drift_prints_rates_with_errors_units_and_causes_in_80_columns(call, run_toml, fake_drift):
     done = call("drift", run_toml)
@@ -330,6 +334,27 @@ def test_a_pipe_that_closes_is_no_traceback(run_toml):
     command = f"{sys.executable} -m smallbody.cli shape make --help | true"
     run = subprocess.run(["bash", "-c", command], capture_output=True, text=True)
     assert run.stderr == ""
+
+
+@pytest.mark.skipif(not os.path.exists("/dev/full"), reason="no /dev/full to write to")
+def test_a_full_disk_behind_stdout_is_one_line(run_toml):
+    command = f"{sys.executable} -m smallbody.cli drift {run_toml} --json > /dev/full"
+    run = subprocess.run(["bash", "-c", command], capture_output=True, text=True)
+    assert (run.returncode, run.stderr) == (2, "smallbody: No space left on device\n")
+
+
+RUNS = sorted((Path(__file__).parents[2] / "runs").glob("*.toml"))
+
+
+@pytest.mark.parametrize("path", RUNS, ids=lambda path: path.stem)
+def test_every_run_description_of_the_project_is_good_and_earns_no_note(path):
+    from smallbody.body import read_body
+
+    with warnings.catch_warnings():
+        warnings.simplefilter("error", Note)
+        body = read_body(path)
+    assert body.shape.file.is_file()
+    assert len(RUNS) >= 6
 
 
 # --- inputs -----------------------------------------------------------------------------------------------------
