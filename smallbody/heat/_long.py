@@ -1,7 +1,8 @@
 # mypy: ignore-errors
 """Kernel of the lag solver for one long period: a sweep that looks back over the latest nodes only.
 
-What is older than that reaches the kernel as a flux, worked out between sweeps. LANES facets at once, SI, nothing raised.
+What is older than that reaches the kernel as a flux, worked out between sweeps. LANES facets at once, SI, nothing
+raised.
 """
 
 from __future__ import annotations
