@@ -13,7 +13,7 @@ from typing import Any
 import click
 
 from smallbody import __version__
-from smallbody.cli.talk import common, error_lines, listening, talk_of
+from smallbody.cli.talk import Interrupted, common, error_lines, listening, talk_of
 from smallbody.errors import SmallbodyError
 
 # name: one line for the list of commands (each equals the first line of the command's own help, which a test asks)
@@ -23,7 +23,6 @@ COMMANDS = {
     "sweep": "The same rates over a grid of inputs, kept and resumed cell by cell.",
     "figure": "Draw what a result file holds.",
 }
-INTERRUPTED = 130  # 128 + SIGINT, as shells have it
 
 
 class OneLine(click.Group):
@@ -59,7 +58,7 @@ class OneLine(click.Group):
                 return super().invoke(ctx)
             except KeyboardInterrupt:
                 click.echo("smallbody: interrupted", err=True)
-                raise click.exceptions.Exit(INTERRUPTED) from None
+                raise click.exceptions.Exit(Interrupted.exit_code) from None
             except SmallbodyError as error:
                 for line in error_lines(error):
                     click.echo(f"smallbody: {line}", err=True)
@@ -103,7 +102,7 @@ class OneLine(click.Group):
             click.echo(f"smallbody: {' '.join(error.format_message().split())}{hint}", err=True)
         except click.Abort:
             click.echo("smallbody: interrupted", err=True)
-            code = INTERRUPTED
+            code = Interrupted.exit_code
         code = code if isinstance(code, int) else 0
         if standalone_mode:
             sys.exit(code)

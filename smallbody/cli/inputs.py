@@ -36,7 +36,7 @@ def writable(option: str, path: Path) -> None:
 
 
 def named_numbers(option: str, settings: Iterable[str]) -> dict[str, Any]:
-    """Texts "name=value" as a dictionary; a value is a number, numbers with commas between, true, false or a text.
+    """Texts "name=value" as a dictionary; a value is a number, true, false, a text, or several with commas.
 
     raises : click.BadParameter
     """
@@ -59,7 +59,7 @@ def _value(text: str) -> Any:
             continue
         if set(table) == {"value"}:
             return table["value"]
-    return text
+    return [word.strip() for word in text.split(",") if word.strip()] if "," in text else text
 
 
 def grid(option: str, specifications: Iterable[str]) -> dict[str, list[float]]:

@@ -8,7 +8,7 @@ from pathlib import Path
 import click
 
 from smallbody.cli.inputs import grid, writable
-from smallbody.cli.talk import common, talk_of
+from smallbody.cli.talk import Interrupted, common, talk_of
 from smallbody.errors import SmallbodyError
 
 
@@ -52,7 +52,10 @@ def command(
 
     cells = prod(map(len, over.values()))
     talk.say(f"{cells} cells", 1)
-    result = sweep(body, over, out=out, meter=talk.meter())
+    try:
+        result = sweep(body, over, out=out, meter=talk.meter())
+    except KeyboardInterrupt:
+        raise Interrupted("interrupted; the same command goes on where it stopped") from None
     if len(result.failed) == cells:
         raise SmallbodyError(f"all {cells} cells failed: {result.failed[0][1]}")
     rates = result.arrays["da_dt_au_per_myr"].values

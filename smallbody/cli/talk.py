@@ -17,6 +17,12 @@ from smallbody.workers import SILENT, Meter
 _F = TypeVar("_F", bound=Callable[..., Any])
 
 
+class Interrupted(SmallbodyError):
+    """Ctrl-C, where there is more to say than that."""
+
+    exit_code = 130  # 128 + SIGINT, as shells have it
+
+
 class Talk:
     """How much to say on stderr, and what has been noted so far.
 

@@ -110,6 +110,22 @@ def test_every_command_takes_the_common_options(call):
         assert all(option in text for option in ("-v, --verbose", "-q, --quiet", "--threads N"))
 
 
+def test_the_help_of_figure_names_every_kind_and_every_choice(call):
+    import importlib
+    import inspect
+
+    from smallbody.figures import KINDS
+
+    text = call("figure", "--help").stdout
+    for module_of in KINDS.values():
+        for kind, module in module_of.items():
+            assert kind in text
+            function = getattr(importlib.import_module(f"smallbody.figures.{module}"), kind)
+            for choice in inspect.signature(function).parameters.values():
+                if choice.kind is choice.KEYWORD_ONLY:
+                    assert f"{choice.name}=" in text
+
+
 def test_no_words_at_all_show_the_help(call):
     assert call().stdout == call("--help").stdout
 
@@ -222,6 +238,17 @@ def test_ctrl_c_is_one_line_and_exit_code_130(call, run_toml, fake_drift):
     one_line(call("drift", run_toml), "interrupted", code=130)
 
 
+def test_a_stopped_sweep_says_how_to_go_on(call, run_toml, tmp_path, monkeypatch):
+    import smallbody.batch
+
+    def stop(*_, **__):
+        raise KeyboardInterrupt
+
+    monkeypatch.setattr(smallbody.batch, "sweep", stop)
+    done = call("sweep", run_toml, "--over", "spin.obliquity_deg=0,90", "--out", tmp_path / "s.h5")
+    one_line(done, "interrupted; the same command goes on where it stopped", code=130)
+
+
 def test_running_out_of_memory_is_one_line(call, run_toml, fake_drift):
     def stop():
         raise MemoryError
@@ -297,6 +324,9 @@ def test_several_faults_are_a_line_each(call, run_toml):
         ("sweep RUN --over spin.obliquity_deg=0:90:30 --out none/s.h5", "there is no folder"),
         ("figure none.h5", "Missing option '--out'"),
         ("figure none.h5 --out none/f.png", "there is no folder"),
+        ("figure none.h5 --set out=x --out f.png", "out is not a choice of a picture"),
+        ("figure none.h5 --out f.png", "none.h5"),
+        ("figure none.h5 --out f.gif", ".gif"),
         ("figure none.h5 --set x --out f.png", "'x' must look like name=value"),
         ("shape", "give a shape file to look over"),
         ("shape -v", "give a shape file to look over"),
@@ -370,8 +400,17 @@ def test_steps_include_the_stop_they_land_on_and_carry_no_round_off():
 
 
 def test_names_may_have_numbers_lists_flags_and_texts():
-    numbers = named_numbers("--set", ["a=1", "b=0.5", "c=3,2,1", "d=[3, 2]", "e=true", "f=front", "g-h=1e3"])
-    assert numbers == {"a": 1, "b": 0.5, "c": [3, 2, 1], "d": [3, 2], "e": True, "f": "front", "g_h": 1000.0}
+    settings = ["a=1", "b=0.5", "c=3,2,1", "d=[3, 2]", "e=true", "f=front", "g-h=1e3", "i=front, back,"]
+    assert named_numbers("--set", settings) == {
+        "a": 1,
+        "b": 0.5,
+        "c": [3, 2, 1],
+        "d": [3, 2],
+        "e": True,
+        "f": "front",
+        "g_h": 1000.0,
+        "i": ["front", "back"],
+    }
 
 
 # --- numbers ----------------------------------------------------------------------------------------------------
@@ -528,3 +567,6 @@ def test_a_sweep_and_its_figure_come_from_the_command_line(call, run_toml, tmp_p
     assert (rates.values[2] < 0).all()  # retrograde: inwards (common practice)
     assert call("figure", out, "--out", picture).exit_code == 0
     assert picture.read_bytes().startswith(b"\x89PNG")
+    assert call("figure", out, "--out", picture.with_suffix(".svg"), "--set", "spin.obliquity_deg=90").exit_code == 0
+    assert "<svg" in picture.with_suffix(".svg").read_text()
+    one_line(call("figure", out, "temperature", "--out", picture), "no picture 'temperature' of a sweep")
