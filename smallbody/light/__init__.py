@@ -13,12 +13,13 @@ from smallbody.light.sun import (
     sun_on_body,
     true_anomaly,
 )
-from smallbody.light.sunlight import LightSums, light_sums, lit_cosines, lit_latitudes
+from smallbody.light.sunlight import LightSums, LightTable, light_sums, lit_cosines, lit_latitudes
 
 __all__ = [
     "Course",
     "Horizons",
     "LightSums",
+    "LightTable",
     "Places",
     "SunOnBody",
     "course",

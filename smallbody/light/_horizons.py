@@ -183,6 +183,8 @@ def _block_sky(
                     elif h2 < 0.0:
                         q = h2 / (h2 - h1)
                         x2, z2 = x2 + q * (x1 - x2), z2 + q * (z1 - z2)
+                    if x1 <= 0.0 and x2 <= 0.0:
+                        continue  # what of it rises over the plane is the opposite meridian's
                     if x1 < 0.0:
                         q = x1 / (x1 - x2)
                         x1, z1 = 0.0, z1 + q * (z2 - z1)

@@ -24,113 +24,171 @@ def _day(a, b):
     return (a * h + b * s) / math.pi, (2.0 * a * s + b * (h - s * a / b)) / (2.0 * math.pi)
 
 
+@njit(cache=True, nogil=True, inline="always")
+def _rank(ranked, cells, x):
+    """How many of ranked (ascending, in [-1, 1]) are below x; cells (m + 1,): the same at x = -1 + 2 i/m."""
+    m = cells.shape[0] - 1
+    k = cells[max(0, min(m, math.floor((x + 1.0) * 0.5 * m)))]
+    while k < ranked.shape[0] and ranked[k] < x:
+        k += 1
+    return k
+
+
 @njit(cache=True, nogil=True)
 def _light_sums(
     start, end, normals, areas, middles, samples, rows, starts, low, high, shifts, columns,
-    sin_lat, cos_lat, by_latitude, weight, lambert, lever, across, lit_lever, mean_mu,
+    sin_lat, cos_lat, by_latitude, ranked, cells, weight, lambert, lever, across, lit_lever, mean_mu,
 ):  # fmt: skip
-    """Add facets start..end to the sums over the surface at every place p.
+    """Add facets start..end to the sums over the surface at every place p, for three tables of the sky v: all meridians
+    and samples, every second meridian, every fourth sample.
 
-    lambert (p, 3): sum of dA <mu n>; lever (p, 3): sum of dA <mu r x n>; across (p,): sum of dA <mu>;
-    lit_lever (p, 3): sum of dA <mu r> over the lit sample points; all in the frame where the Sun has no y.
-    mean_mu (f,): mean of <mu> with the given weights (p,). by_latitude (p,): places in ascending order of sin_lat.
+    lambert (v, p, 3): sum of dA <mu n>; lever (v, p, 3): sum of dA <mu r x n>; across (v, p): sum of dA <mu>;
+    lit_lever (v, p, 3): sum of dA <mu r> over the lit sample points; all in the frame where the Sun has no y.
+    mean_mu (f,): mean of <mu> with the given weights (p,). by_latitude (p,): places in ascending order of sin_lat,
+    ranked (p,): their sin_lat, cells: see _rank.
+
+    An interval blocks consecutive ranks. mu is linear in sin and cos of the latitude, so it suffices to note at the two
+    ends what begins and ceases to be blocked, and to add up once for each facet. Plainly: for each sample, meridian and
+    place take mu away from <mu>, mu exp(i lambda) from <mu exp(i lambda)>, mu r from <mu r>, where an interval holds
+    sin_lat.
     """
     p_count = sin_lat.shape[0]
     s_count = shifts.shape[0]
-    i0 = np.empty(p_count)
-    ic = np.empty(p_count)
-    i_s = np.empty(p_count)
-    ranked = np.empty(p_count)
-    for k in range(p_count):
-        ranked[k] = sin_lat[by_latitude[k]]
+    edge = np.zeros((p_count + 1, 4, 12))  # kind of meridian and sample; what begins at a rank
+    run = np.empty((4, 12))
+    part = np.empty(12)
+    lost = np.empty((3, 12))
     share = 1.0 / (columns * s_count)
+    few = 4.0 if s_count >= 4 else 1.0
     for f in range(start, end):
         nx, ny, nz = normals[f, 0], normals[f, 1], normals[f, 2]
         nh = math.sqrt(nx * nx + ny * ny)
         cn, sn = (nx / nh, ny / nh) if nh > 0.0 else (1.0, 0.0)
         rx, ry, rz = middles[f, 0], middles[f, 1], middles[f, 2]
+        gx, gy, gz = ry * nz - rz * ny, rz * nx - rx * nz, rx * ny - ry * nx
         da = areas[f]
-        for p in range(p_count):
-            m0, m1 = _day(nz * sin_lat[p], nh * cos_lat[p])
-            i0[p] = m0
-            ic[p] = m1 * cn
-            i_s[p] = m1 * sn
-            # direct light: all of it here, the blocked part is taken away at its sample point below
-            lit_lever[p, 0] += da * (ic[p] * rx + i_s[p] * ry)
-            lit_lever[p, 1] += da * (ic[p] * ry - i_s[p] * rx)
-            lit_lever[p, 2] += da * m0 * rz
         row = rows[f]
         if row >= 0:
+            edge[:] = 0.0
+            run[:] = 0.0
             for s in range(s_count):
                 qx, qy, qz = samples[f, s, 0], samples[f, s, 1], samples[f, s, 2]
+                rare = 2 if (s % 4 == 3 or s_count < 4) else 0
+                for c in range(columns):
+                    at = (row * s_count + s) * columns + c
+                    if starts[at] == starts[at + 1]:
+                        continue
+                    kind = rare + (1 if c % 2 == 0 else 0)
+                    angle = 2.0 * math.pi * (c + shifts[s]) / columns
+                    cl, sl = math.cos(angle), math.sin(angle)
+                    nl = nx * cl + ny * sl
+                    part[0], part[2], part[4] = 1.0, cl, sl
+                    part[6], part[8], part[10] = cl * qx + sl * qy, cl * qy - sl * qx, qz
+                    for k in range(0, 12, 2):
+                        part[k + 1] = nl * part[k]
+                    for i in range(starts[at], starts[at + 1]):
+                        first, last = _rank(ranked, cells, low[i]), _rank(ranked, cells, high[i])
+                        if first < last:
+                            for k in range(12):
+                                edge[first, kind, k] += part[k]
+                                edge[last, kind, k] -= part[k]
+        mean = 0.0
+        for k in range(p_count):
+            p = by_latitude[k]
+            m0, m1 = _day(nz * sin_lat[p], nh * cos_lat[p])
+            if row >= 0:
+                for i in range(4):
+                    for j in range(12):
+                        run[i, j] += edge[k, i, j]
+                for j in range(12):
+                    lost[0, j] = share * (run[0, j] + run[1, j] + run[2, j] + run[3, j])
+                    lost[1, j] = 2.0 * share * (run[1, j] + run[3, j])
+                    lost[2, j] = few * share * (run[2, j] + run[3, j])
+            vs, vc = nz * sin_lat[p], cos_lat[p]
+            for v in range(3):
+                i0, ic, i_s = m0, m1 * cn, m1 * sn
+                lx, ly, lz = ic * rx + i_s * ry, ic * ry - i_s * rx, m0 * rz
+                if row >= 0:
+                    i0 -= vs * lost[v, 0] + vc * lost[v, 1]
+                    ic -= vs * lost[v, 2] + vc * lost[v, 3]
+                    i_s -= vs * lost[v, 4] + vc * lost[v, 5]
+                    lx -= vs * lost[v, 6] + vc * lost[v, 7]
+                    ly -= vs * lost[v, 8] + vc * lost[v, 9]
+                    lz -= vs * lost[v, 10] + vc * lost[v, 11]
+                i0, ic, i_s = da * i0, da * ic, da * i_s
+                lambert[v, p, 0] += ic * nx + i_s * ny
+                lambert[v, p, 1] += ic * ny - i_s * nx
+                lambert[v, p, 2] += i0 * nz
+                lever[v, p, 0] += ic * gx + i_s * gy
+                lever[v, p, 1] += ic * gy - i_s * gx
+                lever[v, p, 2] += i0 * gz
+                across[v, p] += i0
+                lit_lever[v, p, 0] += da * lx
+                lit_lever[v, p, 1] += da * ly
+                lit_lever[v, p, 2] += da * lz
+                if v == 0:
+                    mean += weight[p] * i0
+        mean_mu[f] = mean / da if da > 0.0 else 0.0
+
+
+@njit(cache=True, nogil=True)
+def _lit(
+    facets, normals, rows, starts, low, high, shifts, columns, sin_lat, cos_lat, by_latitude, ranked, cells,
+    scratch, out,
+):  # fmt: skip
+    """mu at every place and rotation node for the facets given, out (p, c, l): facet l = facets[l] last.
+
+    Nodes are in the order of time: the Sun's body longitude falls by 2 pi/columns from one to the next. Where a facet
+    has a row in the table of the sky, mu is the mean over its samples, each at its own meridian. scratch (p, c).
+    """
+    p_count = sin_lat.shape[0]
+    s_count = shifts.shape[0]
+    half = math.pi / columns
+    smooth = 0.0  # mean of cos over the samples' meridians about a node
+    for s in range(s_count):
+        smooth += math.cos(2.0 * math.pi * shifts[s] / columns) / s_count
+    for l in range(facets.shape[0]):
+        f = facets[l]
+        nx, ny, nz = normals[f, 0], normals[f, 1], normals[f, 2]
+        nh = math.sqrt(nx * nx + ny * ny)
+        row = rows[f]
+        for c in range(columns):
+            angle = 2.0 * math.pi * c / columns
+            cl, sl = math.cos(angle), math.sin(angle)
+            nl = nx * cl + ny * sl
+            for p in range(p_count):
+                mu = nz * sin_lat[p] + nl * cos_lat[p]
+                if row < 0:
+                    scratch[p, c] = max(0.0, mu)
+                    continue
+                slack = nh * cos_lat[p] * half
+                if mu > slack:  # the Sun is up at all of the samples' meridians
+                    scratch[p, c] = nz * sin_lat[p] + smooth * nl * cos_lat[p]
+                elif mu < -slack:
+                    scratch[p, c] = 0.0
+                else:
+                    total = 0.0
+                    for s in range(s_count):
+                        turned = angle + 2.0 * math.pi * shifts[s] / columns
+                        lean = nx * math.cos(turned) + ny * math.sin(turned)
+                        total += max(0.0, nz * sin_lat[p] + lean * cos_lat[p])
+                    scratch[p, c] = total / s_count
+        if row >= 0:
+            for s in range(s_count):
                 for c in range(columns):
                     at = (row * s_count + s) * columns + c
                     if starts[at] == starts[at + 1]:
                         continue
                     angle = 2.0 * math.pi * (c + shifts[s]) / columns
-                    cl, sl = math.cos(angle), math.sin(angle)
-                    nl = nx * cl + ny * sl
+                    nl = nx * math.cos(angle) + ny * math.sin(angle)
                     for i in range(starts[at], starts[at + 1]):
-                        k = np.searchsorted(ranked, low[i])
-                        while k < p_count and ranked[k] < high[i]:
+                        last = _rank(ranked, cells, high[i])
+                        for k in range(_rank(ranked, cells, low[i]), last):
                             p = by_latitude[k]
-                            k += 1
-                            mu = (nz * sin_lat[p] + nl * cos_lat[p]) * share
-                            if mu <= 0.0:
-                                continue
-                            i0[p] -= mu
-                            ic[p] -= mu * cl
-                            i_s[p] -= mu * sl
-                            lit_lever[p, 0] -= da * mu * (cl * qx + sl * qy)
-                            lit_lever[p, 1] -= da * mu * (cl * qy - sl * qx)
-                            lit_lever[p, 2] -= da * mu * qz
-        gx, gy, gz = ry * nz - rz * ny, rz * nx - rx * nz, rx * ny - ry * nx
-        mean = 0.0
+                            scratch[p, c] -= max(0.0, nz * sin_lat[p] + nl * cos_lat[p]) / s_count
         for p in range(p_count):
-            a0, ac, a_s = da * i0[p], da * ic[p], da * i_s[p]
-            lambert[p, 0] += ac * nx + a_s * ny
-            lambert[p, 1] += ac * ny - a_s * nx
-            lambert[p, 2] += a0 * nz
-            lever[p, 0] += ac * gx + a_s * gy
-            lever[p, 1] += ac * gy - a_s * gx
-            lever[p, 2] += a0 * gz
-            across[p] += a0
-            mean += weight[p] * i0[p]
-        mean_mu[f] = mean
-
-
-@njit(cache=True, nogil=True)
-def _lit(facets, normals, rows, starts, low, high, shifts, columns, sin_lat, cos_lat, out):
-    """mu at every place and rotation node for the facets given, out (p, c, l): facet l = facets[l] last.
-
-    Nodes are in the order of time: the Sun's body longitude falls by 2 pi/columns from one to the next.
-    """
-    s_count = shifts.shape[0]
-    for l in range(facets.shape[0]):
-        f = facets[l]
-        nx, ny, nz = normals[f, 0], normals[f, 1], normals[f, 2]
-        row = rows[f]
-        for c in range(columns):
-            j = (columns - c) % columns
-            for p in range(sin_lat.shape[0]):
-                out[p, j, l] = 0.0
-            for s in range(s_count):
-                shift = shifts[s] if row >= 0 else 0.0
-                angle = 2.0 * math.pi * (c + shift) / columns
-                nl = nx * math.cos(angle) + ny * math.sin(angle)
-                at = (row * s_count + s) * columns + c
-                for p in range(sin_lat.shape[0]):
-                    mu = nz * sin_lat[p] + nl * cos_lat[p]
-                    if mu <= 0.0:
-                        continue
-                    free = True
-                    if row >= 0:
-                        for i in range(starts[at], starts[at + 1]):
-                            if low[i] < sin_lat[p] < high[i]:
-                                free = False
-                                break
-                    if free:
-                        out[p, j, l] += mu / s_count
+            for c in range(columns):
+                out[p, (columns - c) % columns, l] = max(0.0, scratch[p, c])
 
 
 @njit(cache=True, nogil=True)

@@ -25,7 +25,7 @@ class LightSums:
     across : (p,) m2, sum of dA <mu>: the lit cross-section
     lit_lever : (p, 3) m3, sum of dA <mu r> over lit points: its cross product with the Sun's direction is the torque of
         the light that arrives
-    mean_cosine : (f,) mean of <mu> over the places, with their weights
+    mean_cosine : (f,) mean of <mu> over the places, with their weights, with all meridians and samples
     """
 
     lambert: np.ndarray
@@ -34,10 +34,32 @@ class LightSums:
     lit_lever: np.ndarray
     mean_cosine: np.ndarray
 
+    def every_second_place(self) -> LightSums:
+        """The sums at places 0, 2, 4, ...: equal steps of true anomaly stay equal steps."""
+        return LightSums(self.lambert[::2], self.lever[::2], self.across[::2], self.lit_lever[::2], self.mean_cosine)
+
+
+@dataclass(frozen=True)
+class LightTable:
+    """The sums at all places, and what coarser tables of the sky would have made of them."""
+
+    fine: LightSums
+    fewer_meridians: LightSums  # every second one
+    fewer_samples: LightSums  # every fourth one
+
+
+CELLS = 1024  # of the look-up that ranks a latitude among the places
+
+
+def _ranks(sun: SunOnBody) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
+    by_latitude = np.argsort(sun.sin_latitude, kind="stable")
+    ranked = sun.sin_latitude[by_latitude]
+    return by_latitude, ranked, np.searchsorted(ranked, np.linspace(-1.0, 1.0, CELLS + 1))
+
 
 def light_sums(
     shape: Shape, horizons: Horizons, sun: SunOnBody, weight: np.ndarray, *, meter: Meter = SILENT
-) -> LightSums:
+) -> LightTable:
     """Sum the light over the surface at every place.
 
     weight : (p,) of the places, for mean_cosine
@@ -47,9 +69,9 @@ def light_sums(
     from smallbody.light._sunlight import _light_sums
 
     p, f = len(sun.sin_latitude), len(shape.facets)
-    total = [np.zeros((p, 3)), np.zeros((p, 3)), np.zeros(p), np.zeros((p, 3))]
+    total = [np.zeros((3, p, 3)), np.zeros((3, p, 3)), np.zeros((3, p)), np.zeros((3, p, 3))]
     mean_cosine = np.empty(f)
-    by_latitude = np.argsort(sun.sin_latitude, kind="stable")
+    ranks = _ranks(sun)
     parts: dict[int, list[np.ndarray]] = {}
     lock = threading.Lock()
 
@@ -58,7 +80,7 @@ def light_sums(
         _light_sums(
             start, end, shape.normals, shape.areas_m2, shape.centroids_m, horizons.samples, horizons.rows,
             horizons.starts, horizons.low, horizons.high, horizons.shifts, horizons.columns,
-            sun.sin_latitude, sun.cos_latitude, by_latitude, weight, *part, mean_cosine,
+            sun.sin_latitude, sun.cos_latitude, *ranks, weight, *part, mean_cosine,
         )  # fmt: skip
         with lock:
             parts[start] = part
@@ -67,7 +89,7 @@ def light_sums(
     for start in sorted(parts):  # always in the same order, so that sums are the same to the last bit
         for t, part in zip(total, parts[start]):
             t += part
-    return LightSums(*total, mean_cosine)
+    return LightTable(*(LightSums(*(t[v] for t in total), mean_cosine) for v in range(3)))
 
 
 def lit_cosines(shape: Shape, horizons: Horizons, sun: SunOnBody, facets: np.ndarray) -> np.ndarray:
@@ -77,10 +99,11 @@ def lit_cosines(shape: Shape, horizons: Horizons, sun: SunOnBody, facets: np.nda
     """
     from smallbody.light._sunlight import _lit
 
-    out = np.empty((len(sun.sin_latitude), horizons.columns, len(facets)))
+    p = len(sun.sin_latitude)
+    out = np.empty((p, horizons.columns, len(facets)))
     _lit(
         facets, shape.normals, horizons.rows, horizons.starts, horizons.low, horizons.high, horizons.shifts,
-        horizons.columns, sun.sin_latitude, sun.cos_latitude, out,
+        horizons.columns, sun.sin_latitude, sun.cos_latitude, *_ranks(sun), np.empty((p, horizons.columns)), out,
     )  # fmt: skip
     return out
 

@@ -16,6 +16,7 @@ from smallbody.errors import Note, SizeMismatch
 from smallbody.heat import Ground, LagSolver
 from smallbody.light import (
     Horizons,
+    LightSums,
     Places,
     SunOnBody,
     course,
@@ -126,11 +127,15 @@ def _resolve(push: Push, places: Places, world: _World) -> _Seen:
     )  # fmt: skip
 
 
+Light = Mapping[str, _Seen]  # what light pushes: absorbed, scattered, direct
+
+
 @dataclass(frozen=True)
 class _Light:
-    """Light summed at places: what it pushes, and what it left behind."""
+    """Light summed at places: what it pushes, what coarser sums would have said, and what it left behind."""
 
-    seen: Mapping[str, _Seen]  # absorbed, scattered, direct
+    seen: Light
+    coarser: Mapping[str, Light]  # by the key of [solver] that would have to be smaller
     absorbed_w: float  # mean over the orbit, whole surface
     across_m2: float  # mean lit cross-section
     mean_absorbed_w_m2: np.ndarray  # (f,)
@@ -138,18 +143,28 @@ class _Light:
 
 def _light(world: _World, horizons: Horizons, count: int, meter: Meter) -> _Light:
     orbit = world.body.orbit
+    albedo = world.body.surface.bond_albedo
+
+    def seen(sums: LightSums, places: Places) -> Light:
+        pushes = push_of_light(sums, places, world.sun(places), albedo)
+        return {k: _resolve(v, places, world) for k, v in pushes.items()}
+
+    count += count % 2
     places = places_in_true_anomaly(orbit.a_au * AU_M, orbit.e, count)
-    sun = world.sun(places)
     # light received goes as 1/r^2: these weights make the mean cosine that of the light, not of the time
     light = places.weight * places.flux_w_m2
-    sums = light_sums(world.shape, horizons, sun, light / light.sum(), meter=meter)
-    albedo = world.body.surface.bond_albedo
-    pushes = push_of_light(sums, places, sun, albedo)
-    absorbed = (1 - albedo) * light.sum() * sums.mean_cosine
+    table = light_sums(world.shape, horizons, world.sun(places), light / light.sum(), meter=meter)
+    half = places_in_true_anomaly(orbit.a_au * AU_M, orbit.e, count // 2)
+    absorbed = (1 - albedo) * light.sum() * table.fine.mean_cosine
     return _Light(
-        seen={k: _resolve(v, places, world) for k, v in pushes.items()},
+        seen=seen(table.fine, places),
+        coarser={
+            "rotation_nodes": seen(table.fewer_meridians, places),
+            "orbit_places": seen(table.fine.every_second_place(), half),
+            "lit_samples": seen(table.fewer_samples, places),
+        },
         absorbed_w=float(absorbed @ world.shape.areas_m2),
-        across_m2=float(places.weight @ sums.across),
+        across_m2=float(places.weight @ table.fine.across),
         mean_absorbed_w_m2=absorbed,
     )
 
@@ -220,9 +235,9 @@ def _heat_on_course(world: _World, horizons: Horizons, places: Places, meter: Me
 Table = dict[str, dict[str, float]]  # source or "total" -> rate -> value
 
 
-def _rates(world: _World, light: _Light, lag: _Seen) -> tuple[Table, np.ndarray]:
+def _rates(world: _World, light: Light, lag: _Seen) -> tuple[Table, np.ndarray]:
     """All rates by source and in total; and the mean coefficients A1, A2, A3."""
-    parts = {k: s.rates(world) for k, s in light.seen.items()}
+    parts = {k: s.rates(world) for k, s in light.items()}
     late = lag.rates(world)
     out: Table = {
         "thermal": {k: parts["absorbed"][k] + late[k] for k in late},
@@ -230,7 +245,7 @@ def _rates(world: _World, light: _Light, lag: _Seen) -> tuple[Table, np.ndarray]
         "direct": parts["direct"],
     }
     out["total"] = {k: sum(out[s][k] for s in SOURCES) for k in late}
-    coefficients = sum((s.coefficients(world) for s in light.seen.values()), lag.coefficients(world))
+    coefficients = sum((s.coefficients(world) for s in light.values()), lag.coefficients(world))
     return out, np.asarray(coefficients)
 
 
@@ -239,12 +254,18 @@ def _rates(world: _World, light: _Light, lag: _Seen) -> tuple[Table, np.ndarray]
 LEFT_OF = {"rotation_nodes": 0.5, "orbit_places": 0.5, "lit_samples": 0.35}
 
 
-def _errors(fine: Table, coarser: Mapping[str, Table]) -> tuple[Table, dict[str, Table]]:
-    """Numerical errors of all rates, and what each coarser repeat contributes."""
+def _errors(fine: Table, coarser: Mapping[str, tuple[Table, Table]]) -> tuple[Table, dict[str, Table]]:
+    """Numerical errors of all rates, and what each coarser repeat contributes; pairs of a table and a coarser one."""
     by_cause = {
-        cause: {s: {k: LEFT_OF[cause] * abs(fine[s][k] - table[s][k]) for k in fine[s]} for s in fine}
-        for cause, table in coarser.items()
+        cause: {s: {k: LEFT_OF[cause] * abs(a[s][k] - b[s][k]) for k in fine[s]} for s in fine}
+        for cause, (a, b) in coarser.items()
     }
+    # arriving light makes no mean spin torque on any shape (Nesvorny & Vokrouhlicky 2008): what there is of it is error
+    residual = abs(fine["direct"]["domega_dt_rad_per_d2"])
+    for s in ("direct", "total"):
+        by_cause.setdefault("lit_samples", {t: dict.fromkeys(fine[t], 0.0) for t in fine})
+        known = by_cause["lit_samples"][s]
+        known["domega_dt_rad_per_d2"] = max(known["domega_dt_rad_per_d2"], residual)
     total = {s: {k: float(np.sqrt(sum(t[s][k] ** 2 for t in by_cause.values()))) for k in fine[s]} for s in fine}
     return total, by_cause
 
@@ -303,23 +324,23 @@ def _drift(body: Body, shape: Shape | None, horizons: Horizons | None, meter: Me
     steps = solver.march_steps if solver.method == "march" else 0
     heat = _heat(world, horizons, heat_places, meter, steps=steps, keep=True)
     clock.lap("heat")
-    fine, coefficients = _rates(world, light, heat.seen)
+    fine, coefficients = _rates(world, light.seen, heat.seen)
 
+    # What half the rotation nodes change, what half the places change (at half the nodes: it costs less and says the
+    # same), and what a quarter of the sample points change. Step by step there are no places of the heat to halve.
     thin = horizons.thinned() if solver.shadows else no_shadows(shape, nodes // 2)
-    light_thin = _light(world, thin, light_places, meter)
     heat_thin = _heat(world, thin, heat_places, meter, steps=steps // 2)
-    fewer, coefficients_thin = _rates(world, light_thin, heat_thin.seen)
-    light_half = _light(world, horizons, light_places // 2, meter)
-    # step by step there are no places of the heat to halve
     two_clocks = not steps and body.rotations_per_orbit >= SLOW_ROTATIONS
-    heat_half = _heat(world, horizons, heat_places // 2, meter) if two_clocks else heat
-    sparser, coefficients_half = _rates(world, light_half, heat_half.seen)
-    coarser = {"rotation_nodes": fewer, "orbit_places": sparser}
-    spread = [coefficients_thin - coefficients, coefficients_half - coefficients]
+    heat_sparse = _heat(world, thin, heat_places // 2, meter) if two_clocks else heat_thin
+    fewer, a_fewer = _rates(world, light.coarser["rotation_nodes"], heat_thin.seen)
+    base, a_base = _rates(world, light.seen, heat_thin.seen)
+    sparser, a_sparser = _rates(world, light.coarser["orbit_places"], heat_sparse.seen)
+    coarser = {"rotation_nodes": (fine, fewer), "orbit_places": (base, sparser)}
+    spread = [a_fewer - coefficients, a_sparser - a_base]
     if len(horizons.shifts) > 1 and horizons.overshadowed.any():
-        light_few = _light(world, horizons.sampled_coarser(), light_places, meter)
-        coarser["lit_samples"], other = _rates(world, light_few, heat.seen)
-        spread.append(other - coefficients)
+        shadier, a_shadier = _rates(world, light.coarser["lit_samples"], heat.seen)
+        coarser["lit_samples"] = (fine, shadier)
+        spread.append(a_shadier - coefficients)
     errors, by_cause = _errors(fine, coarser)
     clock.lap("coarser repeats")
 
@@ -441,7 +462,7 @@ def _halved(
     solver = world.body.solver
     horizons = horizons_of(half, nodes, solver.lit_samples, meter=meter) if solver.shadows else no_shadows(half, nodes)
     heat = _heat(other, horizons, heat_places, meter)
-    rates, _ = _rates(other, _light(other, horizons, light_places, meter), heat.seen)
+    rates, _ = _rates(other, _light(other, horizons, light_places, meter).seen, heat.seen)
     return {k: abs(rates["total"][k] - full[k]) for k in full}
 
 
