@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import io
 import math
+import re
 from collections.abc import Iterable, Mapping
 from pathlib import Path
 from typing import Any
@@ -90,15 +91,16 @@ def power_of_ten(*arrays: np.ndarray) -> tuple[float, str]:
 
 
 def typeset(unit: str) -> str:
-    """A unit with its powers raised: "rad/d2" and "J m-2 K-1 s-1/2" as they are printed."""
+    """A unit with its powers raised and no fraction bar: "kg/m3" and "J m-2 K-1 s-1/2" as they are printed."""
     words = []
-    for part in (
-        unit.replace("/d2", " d-2").replace("/Myr", " Myr-1").replace("/yr", " yr-1").replace("/m2", " m-2").split()
-    ):
-        stem = part.rstrip("0123456789/-")
-        power = part[len(stem) :]
-        words.append(f"{stem}$^{{{power}}}$" if power else stem)
-    return " ".join(w for w in words if w != "1") if unit != "1/Myr" else "Myr$^{-1}$"
+    for part in unit.split():
+        over, *under = [part] if re.fullmatch(r"[A-Za-z]+-?\d+/\d+", part) else part.split("/")
+        for piece, sign in ((over, ""), *((u, "-") for u in under)):
+            stem = piece.rstrip("0123456789/-")
+            power = piece[len(stem) :] or ("1" if sign else "")
+            if stem:
+                words.append(f"{stem}$^{{{sign}{power}}}$" if power else stem)
+    return " ".join(words)
 
 
 def degrees_axis(axes: Axes, which: str, low: float, high: float) -> None:

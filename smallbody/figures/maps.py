@@ -67,7 +67,7 @@ def _maps(stored: Stored, name: str, label: str, views: Any, phase_deg: Any, col
     for view in views:
         if view not in VIEWS:
             raise FigureError(f"no view {view!r}; there are {', '.join(VIEWS)}")
-    if colours not in colormaps:
+    if not isinstance(colours, str) or colours not in colormaps:
         raise FigureError(f"no colours {colours!r}; matplotlib has cividis, viridis, inferno, magma, plasma and others")
     if not views or not phases or len(views) * len(phases) > 48:
         raise FigureError(f"{len(views)} views at {len(phases)} phases: from 1 to 48 panels can be drawn")
@@ -78,9 +78,11 @@ def _maps(stored: Stored, name: str, label: str, views: Any, phase_deg: Any, col
     nodes = [int(np.argmin(np.abs((turns - turns[0] - p + 180.0) % 360.0 - 180.0))) for p in phases]
 
     drawn = shown[:, nodes]
-    norm = Normalize(float(drawn.min()) if low is None else low, float(drawn.max()) if high is None else high)
-    if not norm.vmin < norm.vmax:  # type: ignore[operator]
-        norm = Normalize(norm.vmin - 0.5, norm.vmax + 0.5)  # type: ignore[operator]
+    bottom = float(drawn.min()) if low is None else _number("low", low)
+    top = float(drawn.max()) if high is None else _number("high", high)
+    if bottom > top or (bottom == top and not (low is None and high is None)):
+        raise FigureError(f"the colour bar would run from {bottom:g} to {top:g}; low and high must ascend")
+    norm = Normalize(bottom, top) if bottom < top else Normalize(bottom - 0.5, top + 0.5)
     columns = len(views) if len(phases) > 1 or len(views) <= 3 else math.ceil(math.sqrt(len(views)))
     grid = [(view, node, phase) for node, phase in zip(nodes, phases) for view in views]
     looks = [body.look(view, suns[node]) for view, node, _ in grid]
