@@ -62,7 +62,8 @@ def orbit_operator(places: Places) -> np.ndarray:
         spline = CubicSpline(np.arange(count + 1), card, bc_type="periodic")
         half = np.fft.irfft(unit * np.fft.rfft(spline(np.mod(s, count))), fine)
         out[:, q] = CubicSpline(np.append(times, 2 * np.pi), np.append(half, half[0]), bc_type="periodic")(m)
-    return out - np.diag(out.sum(axis=1))  # a constant conducts nothing
+    out -= np.diag(out.sum(axis=1))  # a constant conducts nothing
+    return out - places.weight @ out  # and over a whole orbit nothing is conducted in the mean
 
 
 def _running_number(mean_anomaly: np.ndarray, times: np.ndarray) -> np.ndarray:
@@ -120,7 +121,7 @@ class LagSolver:
         t, moments, out = np.zeros((p, n, LANES)), np.zeros((p, 5, LANES)), np.zeros(3)
         es = self.ground.emissivity * SIGMA
         _solve(
-            full_block(absorbed_w_m2), self.weights, self.season, self.season.sum(axis=0), es,
+            full_block(absorbed_w_m2), self.weights, self.season, es,
             float(self.ground.thermal_inertia), TOL_K, MOST_ROUNDS, t, np.zeros((p, LANES)), moments,
             np.zeros((p, LANES)), out,
         )  # fmt: skip
