@@ -12,7 +12,7 @@ import numpy as np
 
 from smallbody.body import Body
 from smallbody.constants import AU_M, C_M_S, DAY_S, GM_SUN, MYR_S
-from smallbody.errors import Note, SizeMismatch
+from smallbody.errors import Note, ShapeError, SizeMismatch
 from smallbody.heat import Ground, LagSolver
 from smallbody.light import (
     Horizons,
@@ -346,7 +346,7 @@ def _drift(body: Body, shape: Shape | None, horizons: Horizons | None, meter: Me
 
     halved: dict[str, float] = {}
     if solver.halved_shape:
-        halved = _halved(world, nodes // 2, heat_places, light_places, fewer["total"], meter)
+        halved = _halved(world, nodes // 2, heat_places, light_places, fewer["total"], meter, steps // 2)
         clock.lap("halved shape")
 
     scale = _spin_scale(world)
@@ -451,17 +451,24 @@ def _sphere(world: _World) -> SphereDrift:
 
 
 def _halved(
-    world: _World, nodes: int, heat_places: int, light_places: int, full: Mapping[str, float], meter: Meter
+    world: _World, nodes: int, heat_places: int, light_places: int, full: Mapping[str, float], meter: Meter, steps: int
 ) -> dict[str, float]:
-    """How far each rate moves when the shape has half the facets, all else equal (at half the rotation nodes)."""
-    half = world.shape.halved()
+    """How far each rate moves when the shape has half the facets, all else equal (at half the rotation nodes).
+
+    Empty, with a note, where half the facets make no usable shape.
+    """
+    try:
+        half = world.shape.halved()
+    except ShapeError as error:
+        warnings.warn(f"whether a denser shape would matter is not known: {error}", Note, stacklevel=2)
+        return {}
     if world.body.shape.diameter_km is not None:
         half = half.scaled(world.shape.diameter_m / half.diameter_m)
     half = half.moved(-half.mass.centre_m)
     other = _world(world.body, half)
     solver = world.body.solver
     horizons = horizons_of(half, nodes, solver.lit_samples, meter=meter) if solver.shadows else no_shadows(half, nodes)
-    heat = _heat(other, horizons, heat_places, meter)
+    heat = _heat(other, horizons, heat_places, meter, steps=steps)
     rates, _ = _rates(other, _light(other, horizons, light_places, meter).seen, heat.seen)
     return {k: abs(rates["total"][k] - full[k]) for k in full}
 
