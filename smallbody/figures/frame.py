@@ -120,7 +120,8 @@ def many(value: Any) -> list[Any]:
 
 def panel_letters(axes: Iterable[Axes], inside: bool = False) -> None:
     """(a), (b), ... at the upper left corners, so that a text can speak of them."""
-    for letter, one in zip("abcdefghijkl", axes):
+    several = list(axes)
+    for letter, one in zip("abcdefghijkl" if len(several) > 1 else "", several):
         if inside:
             one.annotate(
                 f"({letter})", (0, 1), xytext=(6, -5), xycoords="axes fraction", textcoords="offset points", ha="left",

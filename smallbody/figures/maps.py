@@ -29,6 +29,7 @@ VIEWS = {  # name: title; where the viewer is, is in _viewer
 }
 RASTER_FACETS = 4000  # more facets than this are drawn as an image within pdf and svg
 SUN = "#B36B00"  # colour of what is said of the Sun
+HALO = withStroke(linewidth=2.2, foreground="white")  # what is black shows on dark ground too
 UNIT_Z = np.array([0.0, 0.0, 1.0])
 
 
@@ -283,11 +284,14 @@ class _Body:
             if sight:
                 _ringed(axes, start, "+", 5)
             return
-        axes.plot(*np.stack([start, end]).T, color="black", lw=1.0, zorder=3 if sight else 1, solid_capstyle="butt")
+        (line,) = axes.plot(
+            *np.stack([start, end]).T, color="black", lw=1.0, zorder=3 if sight else 1, solid_capstyle="butt"
+        )
+        line.set_path_effects([HALO])
         way = (end - start) / np.linalg.norm(end - start)
         x, y = end + 0.09 * self.reach * way
         text = axes.text(x, y, letter, ha="center", va="center", fontsize=7, zorder=5 if sight else 1)
-        text.set_path_effects([withStroke(linewidth=1.5, foreground="white")])
+        text.set_path_effects([HALO])
 
     def _sun(self, axes: Axes, look: _Look, sun: np.ndarray) -> None:
         below = self.surface(sun)
