@@ -12,7 +12,7 @@ import numpy as np
 
 from smallbody.body import Body
 from smallbody.constants import AU_M, C_M_S, DAY_S, GM_SUN, MYR_S
-from smallbody.errors import Note, ShapeError, SizeMismatch
+from smallbody.errors import BodyError, Note, ShapeError, SizeMismatch
 from smallbody.heat import Ground, LagSolver
 from smallbody.light import (
     Horizons,
@@ -29,6 +29,7 @@ from smallbody.light import (
     sun_on_body,
     whole_rotations,
 )
+from smallbody.light.course import NEAR_ENOUGH
 from smallbody.push.gauss import ORBIT_UNITS, SPIN_UNITS, element_rates, mean_coefficients, spin_rates
 from smallbody.push.recoil import HeatRun, Push, push_of_course, push_of_heat, push_of_light
 from smallbody.push.result import SOURCES, Acceleration, Checks, Drift, OrbitRates, Rate, SourceRates, SpinRates
@@ -38,6 +39,8 @@ from smallbody.shape import Shape, prepare_shape
 from smallbody.workers import SILENT, Meter
 
 SLOW_ROTATIONS = 50.0  # fewer in an orbit: rotation and orbit are one long period
+FEWEST_STEPS = 10  # in a rotation, of a coarser repeat of the marching reference
+MOST_STEPS = 200_000  # of a long period, where only whole rotations ask for more than one orbit
 MOST_ASCENSION = 0.25  # the Sun's motion in longitude is not taken to change the rotation rate by more than this
 WORTH_SAYING = 0.02  # relative numerical error beyond which the output says what to raise
 SMALL_DRIFT = 1e-3  # of the natural scale: a drift smaller than this is judged against the scale
@@ -87,6 +90,11 @@ def _world(body: Body, shape: Shape) -> _World:
 def default_places(e: float) -> int:
     """Places of the orbit at which heat is solved, unless asked otherwise: more on eccentric orbits."""
     return 24 if e < 0.3 else 32 if e < 0.6 else 48 if e < 0.8 else 96
+
+
+def fewest_places(e: float) -> int:
+    """Fewer places of the heat than this, halved for the error, stand too far apart for a spline of the daily means."""
+    return 8 if e < 0.65 else 10 if e < 0.9 else 24
 
 
 def default_light_places(e: float) -> int:
@@ -204,18 +212,21 @@ def _heat(world: _World, horizons: Horizons, count: int, meter: Meter, *, steps:
 
 
 def _heat_on_course(world: _World, horizons: Horizons, places: Places, meter: Meter, steps: int, keep: bool) -> _Heat:
-    orbit, nodes = world.body.orbit, horizons.columns
-    if steps:
-        orbits, rotations = whole_rotations(world.body.rotations_per_orbit, 1)
-        n = steps * max(rotations, 1)
-    else:
-        orbits, rotations = whole_rotations(world.body.rotations_per_orbit)
-        n = nodes * rotations
-    n = max(n, int(orbits * nodes * np.sqrt(1 + orbit.e) / (1 - orbit.e) ** 1.5))  # perihelion is passed quickly
-    way = course(places.a_m, orbit.e, world.body.obliquity, world.body.pole_azimuth, orbits, rotations, n)
+    orbit, nodes, exact = world.body.orbit, horizons.columns, world.body.rotations_per_orbit
     # which place a step is nearest to
     m = places.mean_anomaly
     middle = 0.5 * (m + np.append(m[1:], m[0] + 2 * np.pi))
+    # perihelion is passed quickly, and every place wants a step of its own
+    least = max(nodes * np.sqrt(1 + orbit.e) / (1 - orbit.e) ** 1.5, 2 * np.pi / np.diff(middle).min())
+    # so many orbits hold whole rotations to NEAR_ENOUGH (Dirichlet's theorem), if the steps are not too many
+    orbits, rotations = whole_rotations(exact, int(min(np.sqrt(1 / (NEAR_ENOUGH * exact)) + 1, MOST_STEPS // least)))
+    n = max((steps or nodes) * rotations, int(orbits * least) + 1)
+    if keep and abs(rotations / orbits / exact - 1) > WORTH_SAYING / 2:
+        warnings.warn(
+            f"heat is solved for {rotations} rotations in {orbits} orbits, not {exact * orbits:.4g}", Note,
+            stacklevel=2,
+        )  # fmt: skip
+    way = course(places.a_m, orbit.e, world.body.obliquity, world.body.pole_azimuth, orbits, rotations, n)
     bins = np.searchsorted(middle, np.mod(way.places.mean_anomaly, 2 * np.pi)) % len(m)
     shown = np.round(np.arange(nodes) * n / (nodes * rotations)).astype(int) % n if keep else None
     run = push_of_course(
@@ -299,7 +310,16 @@ def _with_notes(result: Drift, said: tuple[str, ...]) -> Drift:
 
 def _drift(body: Body, shape: Shape | None, horizons: Horizons | None, meter: Meter) -> Drift:
     clock = _Clock()
-    solver = body.solver
+    solver, e = body.solver, body.orbit.e
+    heat_places = solver.orbit_places or default_places(e)
+    light_places = solver.light_places or default_light_places(e)
+    steps = solver.march_steps if solver.method == "march" else 0
+    fewer_steps = max(steps // 2, FEWEST_STEPS) if steps else 0
+    two_clocks = not steps and body.rotations_per_orbit >= SLOW_ROTATIONS
+    if two_clocks and heat_places < (fewest := fewest_places(e)):
+        raise BodyError(
+            f"solver.orbit_places = {heat_places} is too few at orbit.e = {e:g}; from {fewest} on it will do"
+        )
     if shape is None:
         shape = prepare_shape(body.shape)
     world = _world(body, shape)
@@ -315,13 +335,9 @@ def _drift(body: Body, shape: Shape | None, horizons: Horizons | None, meter: Me
             f"{len(shape.facets)} facets and {nodes} rotation nodes"
         )
     clock.lap("horizons")
-    e = body.orbit.e
-    heat_places = solver.orbit_places or default_places(e)
-    light_places = solver.light_places or default_light_places(e)
 
     light = _light(world, horizons, light_places, meter)
     clock.lap("light")
-    steps = solver.march_steps if solver.method == "march" else 0
     heat = _heat(world, horizons, heat_places, meter, steps=steps, keep=True)
     clock.lap("heat")
     fine, coefficients = _rates(world, light.seen, heat.seen)
@@ -329,8 +345,7 @@ def _drift(body: Body, shape: Shape | None, horizons: Horizons | None, meter: Me
     # What half the rotation nodes change, what half the places change (at half the nodes: it costs less and says the
     # same), and what a quarter of the sample points change. Step by step there are no places of the heat to halve.
     thin = horizons.thinned() if solver.shadows else no_shadows(shape, nodes // 2)
-    heat_thin = _heat(world, thin, heat_places, meter, steps=steps // 2)
-    two_clocks = not steps and body.rotations_per_orbit >= SLOW_ROTATIONS
+    heat_thin = _heat(world, thin, heat_places, meter, steps=fewer_steps)
     heat_sparse = _heat(world, thin, heat_places // 2, meter) if two_clocks else heat_thin
     fewer, a_fewer = _rates(world, light.coarser["rotation_nodes"], heat_thin.seen)
     base, a_base = _rates(world, light.seen, heat_thin.seen)
@@ -346,7 +361,7 @@ def _drift(body: Body, shape: Shape | None, horizons: Horizons | None, meter: Me
 
     halved: dict[str, float] = {}
     if solver.halved_shape:
-        halved = _halved(world, nodes // 2, heat_places, light_places, fewer["total"], meter, steps // 2)
+        halved = _halved(world, nodes // 2, heat_places, light_places, fewer["total"], meter, fewer_steps)
         clock.lap("halved shape")
 
     scale = _spin_scale(world)
@@ -514,6 +529,8 @@ def _advice(
         if errors[key] > WORTH_SAYING * size:
             cause = max(by_cause, key=lambda c: by_cause[c]["total"][key])
             also = " and solver.light_places" if cause == "orbit_places" else ""
+            if cause == "rotation_nodes" and world.body.solver.method == "march":
+                also = " and solver.march_steps"
             said.append(
                 f"{key}: numerical error is {100 * errors[key] / size:.1f} %, most of it from solver.{cause}; "
                 f"raise solver.{cause}{also}"
