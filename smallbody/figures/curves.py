@@ -38,17 +38,11 @@ def rotation(stored: Stored, *, facets: Any = None, against: str = "hour_angle")
     for i, facet in enumerate(chosen):
         latitude = np.degrees(np.arcsin(np.clip(normals[facet, 2], -1, 1)))
         longitude = np.degrees(np.arctan2(normals[facet, 1], normals[facet, 0]))
-        if against == "hour_angle":
-            x = (longitude - sun + 180.0) % 360.0 - 180.0
-        else:
-            x = (sun[0] - sun) % 360.0
-        order = np.argsort(x, kind="stable")
-        x = np.append(x[order], x[order[0]] + 360.0)  # once round
+        x = longitude - sun if against == "hour_angle" else sun[0] - sun
         label = f"{facet}: {_signed(latitude)}" + (" (overshadowed)" if overshadowed[facet] else "")
         look = {"color": LINE_COLOURS[i % len(LINE_COLOURS)], "linestyle": DASHES[i], "label": label}
         for axes, name in ((upper, "facet_absorbed_w_m2"), (lower, "facet_temperature_k")):
-            y = values(stored, name)[facet, order]
-            axes.plot(x, np.append(y, y[0]), **look)
+            axes.plot(*_round(x, values(stored, name)[facet], -180.0 if against == "hour_angle" else 0.0), **look)
     upper.set_ylabel(f"Absorbed sunlight ({typeset('W/m2')})")
     upper.set_ylim(bottom=0.0)
     lower.set_ylabel("Temperature (K)")
@@ -78,6 +72,23 @@ def _normals(stored: Stored) -> np.ndarray:
     a, b, c = np.moveaxis(values(stored, "vertex_m")[values(stored, "facet_vertex")], 1, 0)
     n = np.cross(b - a, c - a)
     return np.asarray(n / np.linalg.norm(n, axis=1, keepdims=True))
+
+
+def _round(angle_deg: np.ndarray, y: np.ndarray, low: float) -> tuple[np.ndarray, np.ndarray]:
+    """A curve over one turn, from `low`: closed where it comes back to its start, cut where it leaves the picture.
+
+    That of a slow rotator does not come back: the Sun has moved on by the time the body has turned once.
+    """
+    last = angle_deg[-1] + (angle_deg[-1] - angle_deg[0]) / (len(angle_deg) - 1)
+    if abs(abs(last - angle_deg[0]) - 360.0) < 1e-6:
+        angle_deg, y = np.append(angle_deg, last), np.append(y, y[0])
+    # each stretch that crosses an edge is drawn on both sides of it; what is beyond the axis is not seen
+    turn = np.floor((angle_deg - low) / 360.0)
+    xs, ys = [], []
+    for k in np.arange(turn.min(), turn.max() + 1):
+        xs += [*(angle_deg - 360.0 * k), np.nan]
+        ys += [*y, np.nan]
+    return np.array(xs), np.array(ys)
 
 
 def _signed(degrees: float) -> str:

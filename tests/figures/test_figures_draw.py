@@ -16,7 +16,7 @@ from matplotlib.figure import Figure
 import smallbody
 from smallbody.body import Body, Bulk, Orbit, ShapeSource, Solver, Spin, Surface
 from smallbody.errors import FigureError, Note, StoreError
-from smallbody.figures import draw, maps
+from smallbody.figures import curves, draw, maps
 from smallbody.figures.frame import typeset
 from smallbody.quantity import Quantity
 from smallbody.store import Stored, load, save
@@ -254,10 +254,25 @@ def test_the_scale_bar_is_as_long_as_it_says(real):
 def test_light_peaks_at_local_noon_and_heat_after_it(real):
     figure = draw(real, "rotation", facets=[int(np.argmax(np.abs(normals(real)[:, 0])))])
     light, heat = figure.axes[:2]
-    x = light.lines[0].get_xdata()
     step = 360 / 32
-    assert abs(x[np.argmax(light.lines[0].get_ydata())]) <= step / 2 + 1e-9
-    assert x[np.argmax(heat.lines[0].get_ydata())] > 0
+    for panel, low, high in ((light, -step / 2, step / 2), (heat, step / 2, 90.0)):
+        x, y = panel.lines[0].get_data()
+        seen = (x >= -180) & (x <= 180)
+        assert low - 1e-9 <= x[seen][np.argmax(y[seen])] <= high + 1e-9
+
+
+def test_the_curve_through_a_rotation_has_no_gap_and_that_of_a_slow_rotator_no_false_end():
+    angle = 33.0 + np.arange(64) * 360 / 64
+    x, y = curves._round(angle, np.cos(np.radians(angle)), -180.0)
+    seen = (x >= -180 - 6) & (x <= 180 + 6)  # the whole axis, up to the points just beyond it
+    np.testing.assert_allclose(y[seen], np.cos(np.radians(x[seen])), atol=1e-12)
+    assert np.max(np.diff(np.sort(x[seen]))) < 360 / 64 + 1e-9
+    assert x[seen].min() <= -180
+    assert x[seen].max() >= 180
+    slow = 33.0 + np.arange(64) * 300 / 64  # the Sun went along for a sixth of the way
+    x, y = curves._round(slow, slow, -180.0)
+    steps = np.diff(x)
+    np.testing.assert_allclose(steps[np.isfinite(steps)], 300 / 64)
 
 
 def normals(stored: Stored) -> np.ndarray:
