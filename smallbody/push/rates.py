@@ -5,7 +5,7 @@ from __future__ import annotations
 import time
 import warnings
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from importlib.metadata import PackageNotFoundError, version
 
 import numpy as np
@@ -15,6 +15,7 @@ from smallbody.constants import AU_M, C_M_S, DAY_S, GM_SUN, MYR_S
 from smallbody.errors import BodyError, Note, ShapeError, SizeMismatch
 from smallbody.heat import Ground, LagSolver
 from smallbody.light import (
+    Course,
     Horizons,
     LightSums,
     Places,
@@ -39,6 +40,7 @@ from smallbody.shape import Shape, prepare_shape
 from smallbody.workers import SILENT, Meter
 
 SLOW_ROTATIONS = 50.0  # fewer in an orbit: rotation and orbit are one long period
+WELL_MIXED = 24  # rotations of a long period in which any part of the body meets any part of the orbit
 FEWEST_STEPS = 10  # in a rotation, of a coarser repeat of the marching reference
 MOST_STEPS = 200_000  # of a long period, where only whole rotations ask for more than one orbit
 MOST_ASCENSION = 0.25  # the Sun's motion in longitude is not taken to change the rotation rate by more than this
@@ -229,10 +231,17 @@ def _heat_on_course(world: _World, horizons: Horizons, places: Places, meter: Me
     way = course(places.a_m, orbit.e, world.body.obliquity, world.body.pole_azimuth, orbits, rotations, n)
     bins = np.searchsorted(middle, np.mod(way.places.mean_anomaly, 2 * np.pi)) % len(m)
     shown = np.round(np.arange(nodes) * n / (nodes * rotations)).astype(int) % n if keep else None
-    run = push_of_course(
-        world.shape, horizons, way, world.ground, world.body.surface.bond_albedo, bins,
-        march=steps > 0, shown=shown, meter=meter,
-    )  # fmt: skip
+    # how the body lies at perihelion is not known and does not last: where it matters, mean over some ways of lying
+    lies = int(np.ceil(WELL_MIXED / rotations))
+    runs = [
+        push_of_course(
+            world.shape, horizons, _lying(way, k / (lies * orbits)), world.ground, world.body.surface.bond_albedo, bins,
+            march=steps > 0, shown=shown if k == 0 else None, meter=meter,
+        )
+        for k in range(lies)
+    ]  # fmt: skip
+    push = Push(*(np.mean([getattr(r.push, x) for r in runs], axis=0) for x in ("force", "torque")))
+    run = replace(runs[0], push=push, excess_w=np.mean([r.excess_w for r in runs], axis=0))
     seen = _resolve(run.push, way.places, world)
     per = np.bincount(bins, minlength=len(m))[:, None]
     force, torque = (
@@ -241,6 +250,14 @@ def _heat_on_course(world: _World, horizons: Horizons, places: Places, meter: Me
     )
     turns = way.turns[shown] if shown is not None else way.turns[:0]
     return _Heat(seen, _Seen(places, force, torque), run, turns)
+
+
+def _lying(way: Course, turn: float) -> Course:
+    """The same course over a body that lies turned by a part of a rotation."""
+    c, s = np.cos(2 * np.pi * turn), np.sin(2 * np.pi * turn)
+    return replace(
+        way, turns=way.turns - turn, frame=np.array([[c, s, 0.0], [-s, c, 0.0], [0.0, 0.0, 1.0]]) @ way.frame
+    )
 
 
 Table = dict[str, dict[str, float]]  # source or "total" -> rate -> value
@@ -303,8 +320,6 @@ def drift(body: Body, *, shape: Shape | None = None, horizons: Horizons | None =
 
 
 def _with_notes(result: Drift, said: tuple[str, ...]) -> Drift:
-    from dataclasses import replace
-
     return replace(result, notes=said + result.notes)
 
 
