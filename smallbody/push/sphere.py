@@ -31,13 +31,17 @@ def lag_factor(theta: float, radius_in_skins: float | None = None) -> float:
         return 0.0
     # linearised surface: (4 eps sigma Tm^3) dT + K d(dT)/dr = absorbed, with 4 Tm^3 = sqrt(2) T*^3 (Tm^4 = T*^4/4);
     # dT inside goes as j1(k r), k^2 = -i w rho c/K, so conduction answers with K k j1'(kR)/j1(kR)
-    if radius_in_skins is None or radius_in_skins > 300.0:
+    if radius_in_skins is None:
         answer = np.exp(1j * np.pi / 4)
     else:
         x = radius_in_skins * np.exp(-1j * np.pi / 4)  # k R, in units of the depth sqrt(K/(rho c w))
-        j1 = np.sin(x) / x**2 - np.cos(x) / x
-        slope = np.sin(x) / x - 2 * j1 / x
-        answer = np.exp(-1j * np.pi / 4) * slope / j1
+        if radius_in_skins < 0.02:  # the first terms of the series: what follows would be a difference of equals
+            slope_over_j1 = (1 - 0.3 * x**2) / (x * (1 - 0.1 * x**2))
+        else:
+            tan = np.tan(x) if radius_in_skins < 300.0 else -1j  # sine and cosine themselves overflow
+            j0, j1 = tan / x, tan / x**2 - 1 / x  # both over cos x
+            slope_over_j1 = (j0 - 2 * j1 / x) / j1
+        answer = np.exp(-1j * np.pi / 4) * slope_over_j1
     return float(-np.imag(1.0 / (1.0 + theta / np.sqrt(2.0) * answer)))
 
 
