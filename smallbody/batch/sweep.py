@@ -410,9 +410,5 @@ def _report(result: Sweep) -> Sweep:
         warnings.warn(f"{len(failed)} of {cells} cells failed; the first, {where}: {error}", Note, stacklevel=3)
     noted = [text for text in result.arrays["notes"].values.ravel() if text]
     if noted:
-        warnings.warn(
-            f"{len(noted)} of {cells} cells have notes (`notes` in the result), the first: {noted[0]}",
-            Note,
-            stacklevel=3,
-        )
+        warnings.warn(f"notes on {len(noted)} of {cells} cells; the first: {noted[0]}", Note, stacklevel=3)
     return result
