@@ -18,7 +18,7 @@ from smallbody.workers import SILENT, Meter, share
 
 DEPTH_SKINS = 7.0
 GROWTH = 1.25
-FIRST_CELL = 0.05
+FIRST_CELL = 0.02
 TOL_K = 5e-3
 WARM_STEPS = (8, 24)  # steps in a turn of the fastest clock on the coarse periods that come first
 WARM_TOL_K = (0.3, 0.03)  # how well two coarse periods must agree
