@@ -9,6 +9,7 @@ temperatures stay positive whatever the inertia. Over the orbit it acts on the d
 from __future__ import annotations
 
 from dataclasses import dataclass
+from functools import cached_property
 
 import numpy as np
 
@@ -79,6 +80,37 @@ def _running_number(mean_anomaly: np.ndarray, times: np.ndarray) -> np.ndarray:
     return np.asarray(CubicSpline(m, dense)(times))
 
 
+def steady_orbit_operator(places: Places) -> np.ndarray:
+    """The same matrix with the daily mean taken as straight lines in time between the places: less exact, but an
+    M-matrix, so that temperatures stay positive whatever the light.
+
+    source : the L1 formula (Oldham & Spanier 1974, The Fractional Calculus, sec. 8.2, from memory) with the memory of
+        all earlier orbits summed as a Hurwitz zeta function
+    """
+    count = len(places)
+    if count < 3:
+        return np.zeros((count, count))
+    period = 2 * np.pi / places.mean_motion
+    x = places.mean_anomaly / (2 * np.pi)
+    gap = np.diff(np.append(x, x[0] + 1))
+    # sum over orbits of (age + m)^(-1/2), integrated over age: twice the Hurwitz zeta function of order -1/2
+    age_start = np.mod(x[:, None] - x[None, :], 1.0)  # of the line that begins at place q, seen from place p
+    age_start[np.diag_indices(count)] = 1.0
+    age_end = age_start - gap
+    memory = 2 * (_zeta_half(age_start) - _zeta_half(np.maximum(age_end, 0.0))) / np.sqrt(np.pi * period)
+    weight = memory / gap  # of the step from place q to q + 1
+    return np.roll(weight, 1, axis=1) - weight
+
+
+def _zeta_half(a: np.ndarray) -> np.ndarray:
+    """Hurwitz zeta function of order -1/2 at a in [0, 1], by Euler-Maclaurin summation (NIST DLMF 25.11.5, 25.2.9)."""
+    terms = 12
+    k = np.arange(terms)
+    z = a + terms
+    head = np.sqrt(a[..., None] + k).sum(axis=-1)
+    return np.asarray(head - z**1.5 / 1.5 + z**0.5 / 2 - z**-0.5 / 24 + z**-2.5 / 1920)
+
+
 @dataclass(frozen=True)
 class Ground:
     """What the surface is made of: emissivity, and thermal inertia in J m-2 K-1 s-1/2."""
@@ -109,8 +141,6 @@ class LagSolver:
 
         raises : SizeMismatch; NotSettled, if the iteration does not end (temperatures so far are in the details)
         """
-        from smallbody.heat._lag import _solve
-
         p, n, facets = absorbed_w_m2.shape
         if (p, n) != (len(self.places), self.nodes):
             raise SizeMismatch(
@@ -118,20 +148,38 @@ class LagSolver:
             )
         if facets > LANES:
             raise SizeMismatch(f"absorbed light of {facets} facets; a block has at most {LANES}")
-        t, moments, out = np.zeros((p, n, LANES)), np.zeros((p, 5, LANES)), np.zeros(3)
-        es = self.ground.emissivity * SIGMA
-        _solve(
-            full_block(absorbed_w_m2), self.weights, self.season, es,
-            float(self.ground.thermal_inertia), TOL_K, MOST_ROUNDS, t, np.zeros((p, LANES)), moments,
-            np.zeros((p, LANES)), out,
-        )  # fmt: skip
-        if not out[2] <= TOL_K:
+        light = full_block(absorbed_w_m2)
+        t, moments, rounds, worst = self._run(light, self.season)
+        if not worst <= TOL_K:
+            # near darkness a spline through the daily means may ask for temperatures below zero where light comes and
+            # goes fast; straight lines between the places never do, and such facets emit too little to need better
+            lost = np.flatnonzero(~(moments[:, 4] <= TOL_K).all(axis=0))
+            others, more, rounds, worst = self._run(full_block(light[:, :, lost]), self.steady_season)
+            t[:, :, lost], moments[:, :, lost] = others[:, :, : len(lost)], more[:, :, : len(lost)]
+        if not worst <= TOL_K:
             raise NotSettled(
-                f"temperatures still move by {out[2]:.2g} K after {int(out[0])} rounds; try other numbers of "
+                f"temperatures still move by {worst:.2g} K after {rounds} rounds; try other numbers of "
                 f"rotation nodes (now {n}) or orbit places (now {p})",
-                temperature_k=t, rounds=int(out[0]), worst_k=float(out[2]),
+                temperature_k=t, rounds=rounds, worst_k=worst,
             )  # fmt: skip
         return t[:, :, :facets], moments[:, 0, :facets]
+
+    def _run(self, light: np.ndarray, season: np.ndarray) -> tuple[np.ndarray, np.ndarray, int, float]:
+        """Temperatures, moments, rounds, and the largest step of the last one, for a full block."""
+        from smallbody.heat._lag import _solve
+
+        p, n, _ = light.shape
+        t, moments, out = np.zeros((p, n, LANES)), np.zeros((p, 5, LANES)), np.zeros(3)
+        _solve(
+            light, self.weights, season, self.ground.emissivity * SIGMA, float(self.ground.thermal_inertia), TOL_K,
+            MOST_ROUNDS, t, np.zeros((p, LANES)), moments, np.zeros((p, LANES)), out,
+        )  # fmt: skip
+        return t, moments, int(out[0]), float(out[2])
+
+    @cached_property
+    def steady_season(self) -> np.ndarray:
+        """The operator over the orbit for facets that `orbit_operator` does not settle."""
+        return steady_orbit_operator(self.places)
 
     def excess(self, temperature_k: np.ndarray, absorbed_w_m2: np.ndarray) -> np.ndarray:
         """What the ground emits beyond what it absorbs: mean over a rotation, and mean times cos and sin of the Sun's
