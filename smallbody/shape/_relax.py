@@ -10,11 +10,13 @@ import numpy as np
 from numba import njit
 
 BETTER = 1.02  # an edge is swapped only for this gain in quality, so that rounding decides nothing
+GOOD = 0.8  # facets better than this are left alone, so that a grid keeps its symmetry on a body that has it
 
 
 @njit(cache=True, nogil=True)
-def spread(p, f, step, normal, weight, out):  # p (v, 3), f (t, 3), normal (v, 3), weight (v,), out (v, 3)
-    # plainly: towards the area-weighted mean of the centroids of the facets around a vertex, along the surface only
+def spread(p, f, density, step, normal, weight, out):  # p, normal, out (v, 3), f (t, 3), density, weight (v,)
+    # plainly: towards the mean of the centroids of the facets around, weighted by area and wanted density, but along
+    # the surface only
     out[:] = 0.0
     normal[:] = 0.0
     weight[:] = 0.0
@@ -23,7 +25,7 @@ def spread(p, f, step, normal, weight, out):  # p (v, 3), f (t, 3), normal (v, 3
         e0, e1, e2 = p[b, 0] - p[a, 0], p[b, 1] - p[a, 1], p[b, 2] - p[a, 2]
         g0, g1, g2 = p[c, 0] - p[a, 0], p[c, 1] - p[a, 1], p[c, 2] - p[a, 2]
         n0, n1, n2 = e1 * g2 - e2 * g1, e2 * g0 - e0 * g2, e0 * g1 - e1 * g0
-        area = math.sqrt(n0 * n0 + n1 * n1 + n2 * n2)
+        area = math.sqrt(n0 * n0 + n1 * n1 + n2 * n2) * (density[a] + density[b] + density[c])
         m0 = area * (p[a, 0] + p[b, 0] + p[c, 0]) / 3.0
         m1 = area * (p[a, 1] + p[b, 1] + p[c, 1]) / 3.0
         m2 = area * (p[a, 2] + p[b, 2] + p[c, 2]) / 3.0
@@ -116,13 +118,14 @@ def swap_edges(
             if crease[c] > 0 and crease[c] == crease[d]:
                 if then <= 0.3:
                     continue
-            elif then <= BETTER * now:  # or, for the sake of six edges at every vertex, not much worse
+            elif now > GOOD or then <= BETTER * now:  # or, for the sake of six edges at every vertex, not much worse
                 gain = degree[a] + degree[b] - degree[c] - degree[d]  # squared deviations from six fall by 2 (gain - 2)
                 if not regular or gain <= 2 or then <= 0.7 * now or then <= 0.6:
                     continue
             if _triple(p, c, a, d) <= 0.0 or _triple(p, d, b, c) <= 0.0:
                 continue
-            if _fold(p, a, b, c, d) <= 0.5 or _are_joined(f, nb, t, (k + 2) % 3, d):
+            fold = _fold(p, a, b, c, d)
+            if (fold <= 0.5 and fold <= _fold(p, c, d, b, a)) or _are_joined(f, nb, t, (k + 2) % 3, d):
                 continue
             t_ca, t_bc = nb[t, (k + 2) % 3], nb[t, (k + 1) % 3]
             o_ad, o_db = nb[o, (j + 1) % 3], nb[o, (j + 2) % 3]

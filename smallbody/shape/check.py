@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import ArrayLike
@@ -13,6 +13,7 @@ from smallbody.shape.model import Shape
 # A facet is degenerate when its height over its longest edge is below this part of that edge: coordinates with the six
 # or seven digits that files carry cannot say which way such a facet looks.
 FLAT = 1e-7
+MOST_PAIRS = 5_000_000_000  # of boxes looked at for crossings, some ten seconds
 NAMED = 3  # how many facets a message names; `Fault.facets` has all of them
 
 
@@ -20,7 +21,8 @@ NAMED = 3  # how many facets a message names; `Fault.facets` has all of them
 class Fault:
     """Something wrong with a surface.
 
-    kind : "coordinate", "degenerate", "duplicate", "open", "crowded", "sense", "pieces", "inverted", "unused", "empty"
+    kind : "empty", "coordinate", "degenerate", "duplicate", "open", "crowded", "sense", "pieces", "inverted", "solid",
+        "crossing" or "unused"
     message : one line of text
     facets : 1-based numbers of the facets concerned, as the file counts them
     lines : 1-based lines of the file, empty where unknown
@@ -38,8 +40,9 @@ def check_shape(shape: Shape) -> list[Fault]:
     """All that keeps a surface from being the boundary of one solid body; empty when there is nothing.
 
     Asked are: finite coordinates; facets with area, each there once; every edge shared by exactly two facets that run
-    along it in opposite senses; one connected surface; facets outward (positive volume); vertices that no facet uses
-    (not serious). Whether the surface cuts through itself is not asked.
+    along it in opposite senses; one connected surface; facets outward (positive volume), with the moments of a solid.
+    Not serious, since published shapes have them and results hardly feel them: facets that cut through each other, and
+    vertices that no facet uses.
     """
     v, f = shape.vertices_m, shape.facets
     if not len(f):
@@ -83,8 +86,17 @@ def check_shape(shape: Shape) -> list[Fault]:
         small = np.flatnonzero(piece != sizes.argmax())
         text = f"the surface falls into {n_pieces:,} pieces, the largest of {sizes.max():,} facets; others"
         faults.append(_fault("pieces", text, shape, small))
-    if not faults and not shape.mass.volume_m3 > 0.0:
-        faults.append(Fault("inverted", f"the volume is {shape.mass.volume_m3:.4g} m3: the facets are turned inwards"))
+    if not faults:
+        mass = shape.mass
+        spread = 0.5 * mass.moments_m5.sum() - mass.moments_m5  # second moments about the three planes of the axes
+        if not mass.volume_m3 > 0.0:
+            faults.append(Fault("inverted", f"the volume is {mass.volume_m3:.4g} m3: the facets are turned inwards"))
+        elif not (spread > 0.0).all():
+            faults.append(Fault("solid", "the moments are those of no solid body: parts of the surface are inside out"))
+        crossing = crossing_facets(v, f)
+        if crossing.size:
+            text = f"{_count(crossing, 'facet cuts', 'facets cut')} through others"
+            faults.append(replace(_fault("crossing", text, shape, crossing), serious=False))
 
     used = np.zeros(len(v), dtype=bool)
     used[f] = True
@@ -97,16 +109,18 @@ def check_shape(shape: Shape) -> list[Fault]:
     return faults
 
 
-def require_usable(shape: Shape) -> None:
-    """Nothing, for a shape that can be used.
+def require_usable(shape: Shape) -> list[Fault]:
+    """The faults that stop nothing, for a shape that can be used.
 
     raises : ShapeError, naming the first serious fault; `details["faults"]` has all
     """
-    faults = [fault for fault in check_shape(shape) if fault.serious]
+    found = check_shape(shape)
+    faults = [fault for fault in found if fault.serious]
     if faults:
         name = f"{shape.source.name}: " if shape.source is not None else ""
         others = f" (and {len(faults) - 1} other faults)" if len(faults) > 2 else " (and one other fault)"
         raise ShapeError(f"{name}{faults[0].message}{others if len(faults) > 1 else ''}", faults=faults)
+    return found
 
 
 class Edges:
@@ -156,6 +170,22 @@ class Edges:
         a, b = facet[right - 1], facet[right]
         graph = coo_array((np.ones(len(a), dtype=np.int8), (a, b)), shape=(self.n_facets, self.n_facets))
         return np.asarray(connected_components(graph, directed=False)[1])
+
+
+def crossing_facets(vertices: np.ndarray, facets: np.ndarray) -> np.ndarray:
+    """Numbers of the facets that others pass through; facets that only touch do not count.
+
+    Boxes are swept along the body's longest extent. On surfaces of very many long facets the search is given up.
+    """
+    from smallbody.shape._crossing import crossing_facets as kernel
+
+    longest = int(np.ptp(vertices[facets].reshape(-1, 3), axis=0).argmax())
+    p = np.ascontiguousarray(np.roll(vertices, -longest, axis=1))
+    corners = p[facets]
+    low, high = corners.min(axis=1), corners.max(axis=1)
+    out = np.zeros(len(facets), dtype=np.bool_)
+    kernel(p, facets, low, high, np.argsort(low[:, 0], kind="stable"), MOST_PAIRS, out)
+    return np.flatnonzero(out)
 
 
 def flat_facets(vertices: np.ndarray, facets: np.ndarray) -> np.ndarray:

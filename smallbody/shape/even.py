@@ -13,17 +13,21 @@ Radius = Callable[[np.ndarray], np.ndarray]  # (n, 3) unit vectors to (n,) dista
 Creases = Callable[[np.ndarray], tuple[np.ndarray, np.ndarray]]
 
 COARSEST = 5  # steps of the first grid
-ROUNDS = 40  # of moving vertices on each grid but the last
-LAST_ROUNDS = 24  # on the last, between swaps of edges
+ROUNDS = 80  # of moving vertices on each grid but the last
+LAST_ROUNDS = 32  # on the last, between swaps of edges
+SLIVER = 0.45  # quality below which no facet is pressed to reach a crease
 REACH = 0.45  # vertices nearer to a crease than this part of their distance from each other are put on it
 STEP = 0.8  # of the way to the middle of the facets around
 
 
-def even_surface(radius: Radius, facets: int, creases: Creases | None = None) -> tuple[np.ndarray, np.ndarray]:
+def even_surface(
+    radius: Radius, facets: int, creases: Creases | None = None, density: Radius | None = None
+) -> tuple[np.ndarray, np.ndarray]:
     """Vertices (v, 3) and facets (f, 3), outward, of a body given by its radius in every direction.
 
     radius : positive, continuous
     facets : as for `sphere_grid`; their number is kept
+    density : where facets should be finer: how many times as many an area, as a function of direction like radius
     creases : where the surface has an edge or a furrow that facets should not lie across
 
     Vertices move along the surface towards the middle of the facets around them (Lloyd's method with centroids, area
@@ -42,13 +46,14 @@ def even_surface(radius: Radius, facets: int, creases: Creases | None = None) ->
         if grid is None:
             directions = _stretched(radius, finer)
         else:
-            directions = _unit(grid.carry(directions, finer))
+            # points on the coarse facets, not directions, which would leave gaps at sharp ends
+            directions = _unit(grid.carry(directions * radius(directions)[:, None], finer))
             if not _faces_out(directions, finer.facets):
                 directions = finer.points
         grid = finer
         if n != last.steps:
-            directions = _spread(radius, directions, grid.facets, ROUNDS)
-    return _finish(radius, directions, last.facets, creases)
+            directions = _spread(radius, directions, grid.facets, ROUNDS, density)
+    return _finish(radius, directions, last.facets, creases, density)
 
 
 def _stretched(radius: Radius, grid: Grid) -> np.ndarray:
@@ -75,13 +80,17 @@ def _faces_out(u: np.ndarray, f: np.ndarray) -> bool:
     return bool((np.einsum("ij,ij->i", a, np.cross(b, c)) > 0.0).all())
 
 
-def _spread(radius: Radius, directions: np.ndarray, facets: np.ndarray, rounds: int) -> np.ndarray:
+def _spread(
+    radius: Radius, directions: np.ndarray, facets: np.ndarray, rounds: int, density: Radius | None
+) -> np.ndarray:
     from smallbody.shape._relax import hold_back, spread
 
     u = directions.copy()
     normal, weight, moved = np.empty_like(u), np.empty(len(u)), np.empty_like(u)
+    even = np.ones(len(u))
     for _ in range(rounds):
-        spread(u * radius(u)[:, None], facets, STEP, normal, weight, moved)
+        wanted = even if density is None else density(u)
+        spread(u * radius(u)[:, None], facets, wanted, STEP, normal, weight, moved)
         new = _unit(moved)
         hold_back(u, new, facets)
         u = new
@@ -89,9 +98,9 @@ def _spread(radius: Radius, directions: np.ndarray, facets: np.ndarray, rounds: 
 
 
 def _finish(
-    radius: Radius, directions: np.ndarray, facets: np.ndarray, creases: Creases | None
+    radius: Radius, directions: np.ndarray, facets: np.ndarray, creases: Creases | None, density: Radius | None
 ) -> tuple[np.ndarray, np.ndarray]:
-    from smallbody.shape._relax import hold_back, neighbours, swap_edges
+    from smallbody.shape._relax import neighbours, swap_edges
 
     f = facets.copy()
     n = len(directions)
@@ -110,23 +119,44 @@ def _finish(
 
     for _ in range(LAST_ROUNDS // 4):
         swap(True)
-        u = _spread(radius, u, f, 4)
+        u = _spread(radius, u, f, 4, density)
     if creases is not None:
         for _ in range(4):
             number, there = creases(u)
             gap = np.sqrt(((there - u) ** 2).sum(axis=1))
             on = np.where((gap < REACH * _spacing(radius, u, f)) & (number > 0), number, 0)
-            pulled = np.where(on[:, None] > 0, there, u)
-            hold_back(u, pulled, f)
-            u = pulled
+            u = _pulled(radius, u, np.where(on[:, None] > 0, there, u), f)
             on = np.where(np.sqrt(((there - u) ** 2).sum(axis=1)) < 1e-12, on, 0)
             swap(False)
-            moved = _spread(radius, u, f, 2)
-            u = np.where(on[:, None] > 0, u, moved)
-            hold_back(moved, u, f)
+            moved = _spread(radius, u, f, 2, density)
+            u = _pulled(radius, moved, np.where(on[:, None] > 0, u, moved), f)
         on = np.where(np.sqrt(((creases(u)[1] - u) ** 2).sum(axis=1)) < 1e-12, on, 0)
     swap(False)
     return u * radius(u)[:, None], f
+
+
+def _pulled(radius: Radius, u: np.ndarray, new: np.ndarray, f: np.ndarray) -> np.ndarray:
+    """The new directions, but the old ones around facets that would turn over or become slivers."""
+    from smallbody.shape._relax import hold_back
+
+    new = new.copy()
+    before = _quality(u * radius(u)[:, None], f)
+    for _ in range(20):
+        hold_back(u, new, f)
+        now = _quality(new * radius(new)[:, None], f)
+        bad = f[(now < SLIVER) & (now < before)].ravel()
+        bad = bad[(new[bad] != u[bad]).any(axis=1)]
+        if not bad.size:
+            return new
+        new[bad] = u[bad]
+    return u
+
+
+def _quality(p: np.ndarray, f: np.ndarray) -> np.ndarray:
+    """4 sqrt(3) area over the sum of squared sides, (f,): 1 for equilateral facets, 0 for slivers."""
+    a, b, c = (p[f[:, k]] for k in range(3))
+    sides = ((b - a) ** 2 + (c - b) ** 2 + (a - c) ** 2).sum(axis=1)
+    return np.asarray(2.0 * np.sqrt(3.0) * np.sqrt((np.cross(b - a, c - a) ** 2).sum(axis=1)) / sides)
 
 
 def _spacing(radius: Radius, u: np.ndarray, f: np.ndarray) -> np.ndarray:

@@ -43,7 +43,7 @@ def parse_shape(data: bytes, name: str) -> Shape:
         return parse_stl(data, name)
     if suffix in FORMATS["ply"]:
         return parse_ply(data, name)
-    if suffix not in FORMATS["table"] and not data.lstrip()[:1].isdigit():
+    if suffix not in FORMATS["table"]:
         if data.startswith((b"ply\n", b"ply\r")):
             return parse_ply(data, name)
         if looks_like_stl(data):

@@ -43,6 +43,7 @@ class Kind:
     fewest : facets
     principal : turned to its principal axes once made (for bodies without an axis of their own)
     even : facets are spread evenly over the surface, not only in direction
+    density : where facets should be finer, from the checked numbers
     creases : where facets should not lie across the surface's edges and furrows, from the checked numbers
     """
 
@@ -53,6 +54,7 @@ class Kind:
     principal: bool = False
     even: bool = True
     creases: Callable[[dict[str, Any]], Creases] | None = None
+    density: Callable[[dict[str, Any]], Radius] | None = None
 
 
 def make_shape(kind: str, facets: int, seed: int = 0, **numbers: Any) -> Shape:
@@ -81,7 +83,9 @@ def make_shape(kind: str, facets: int, seed: int = 0, **numbers: Any) -> Shape:
 
     radius = what.radius(chosen, np.random.default_rng(seed))
     if what.even:
-        vertices, triangles = even_surface(radius, facets, what.creases(chosen) if what.creases else None)
+        creases = what.creases(chosen) if what.creases else None
+        density = what.density(chosen) if what.density else None
+        vertices, triangles = even_surface(radius, facets, creases, density)
     else:
         grid = sphere_grid(facets)
         vertices, triangles = grid.points * radius(grid.points)[:, None], grid.facets
@@ -243,11 +247,13 @@ def _twolobe(numbers: dict[str, Any], rng: np.random.Generator) -> Radius:
     With f1, f2 < 0 inside the lobes the surface is exp(-k f1) + exp(-k f2) = 1. On it both f are >= 0, hence growing
     outwards along any ray from the neck (they are convex and negative there), so a ray meets the surface once.
     """
-    small, neck, sharp = numbers["ratio"], numbers["neck"], 1.0 / numbers["blend"]
+    small, ring = numbers["ratio"], numbers["neck"] * numbers["ratio"]
+    # at the neck f1 = f2 = ln 2 / k: lobes so far apart that the surface passes at the ring, their surfaces within it
+    gap = 0.5 * numbers["blend"] * ring**2
+    sharp = math.log(2.0) / gap
     flat = np.array([1.0, numbers["flat"], numbers["flat"] ** 2])
     rough = gaussian_log_radius(rng, numbers["roughness"], 3.0, 12)
-    ring = neck * small
-    lobes = [(1.0, -math.sqrt(1.0 - ring**2)), (small, math.sqrt(small**2 - ring**2))]
+    lobes = [(1.0, -math.sqrt((1.0 + gap) ** 2 - ring**2)), (small, math.sqrt((small + gap) ** 2 - ring**2))]
 
     def radius(u: np.ndarray) -> np.ndarray:
         # in the stretched frame of a lobe at x, |r u - centre|^2 = squared r^2 - 2 x u_x r + x^2
@@ -261,6 +267,11 @@ def _twolobe(numbers: dict[str, Any], rng: np.random.Generator) -> Radius:
         return _root(outside, np.full(len(u), 4.0)) * np.exp(rough(u))
 
     return radius
+
+
+def _finer_at_the_neck(numbers: dict[str, Any]) -> Radius:
+    # even facets would bridge the wedge between the lobes; a third of their side follows it down to the neck
+    return lambda u: 1.0 + 8.0 * np.exp(-((u[:, 0] / 0.3) ** 2))
 
 
 def _cratered(numbers: dict[str, Any], rng: np.random.Generator) -> Radius:
@@ -381,6 +392,7 @@ KINDS: dict[str, Kind] = {
             "height": Number("pole over equator", 0.9, 0.5, 1.0),
             "roughness": _ROUGH,
         },
+        principal=True,
         creases=_equator,
     ),
     "twolobe": Kind(
@@ -388,12 +400,13 @@ KINDS: dict[str, Kind] = {
         _twolobe,
         {
             "ratio": Number("radius of the smaller lobe over that of the larger", 0.75, 0.5, 1.0),
-            "neck": Number("radius of the neck over that of the smaller lobe", 0.45, 0.3, 0.9),
+            "neck": Number("radius of the neck over that of the smaller lobe", 0.45, 0.4, 0.9),
             "flat": Number("y over x axis of a lobe, and z over y", 0.92, 0.7, 1.0),
-            "blend": Number("rounding at the neck, in radii of the larger lobe", 0.04, 0.005, 0.1),
+            "blend": Number("rounding of the neck, from a crease to smooth", 0.5, 0.1, 0.9),
             "roughness": _ROUGH,
         },
         principal=True,
+        density=_finer_at_the_neck,
     ),
     "cratered": Kind(
         "an irregular body with bowls pressed into it",

@@ -212,21 +212,33 @@ def mass_properties(vertices_m: np.ndarray, facets: np.ndarray) -> MassPropertie
     first = six_volumes @ corner_sum / 24.0
     # integral of x x^T over a tetrahedron with one corner at 0: volume/20 times the sum of the corners' and their sum's
     second = sum(np.einsum("i,ij,ik->jk", six_volumes, p, p) for p in (a, b, c, corner_sum)) / 120.0
-    with np.errstate(invalid="ignore", divide="ignore"):
+    with np.errstate(invalid="ignore", divide="ignore", over="ignore"):
         centre = first / volume
-    second = second - volume * np.outer(centre, centre)
+        second = second - volume * np.outer(centre, centre)
     inertia = np.trace(second) * np.eye(3) - second
     inertia = 0.5 * (inertia + inertia.T)
     if np.isfinite(inertia).all():
         moments, columns = np.linalg.eigh(inertia)
-        axes = _orderly(columns.T)
+        axes = _orderly(moments, columns.T)
     else:
         moments, axes = np.full(3, np.nan), np.full((3, 3), np.nan)
     return MassProperties(volume, _frozen(centre + origin), _frozen(inertia), _frozen(moments), _frozen(axes))
 
 
-def _orderly(axes: np.ndarray) -> np.ndarray:
-    """Rows with fixed signs, right-handed: the last points to +z, the first to +x (to +y, +z where those vanish)."""
+def _orderly(moments: np.ndarray, axes: np.ndarray) -> np.ndarray:
+    """Rows with fixed signs, right-handed: the last points to +z, the first to +x (to +y, +z where those vanish).
+
+    Where moments agree to 1e-9 any axes between theirs would do: those nearest to z and x are taken, so that rounding
+    turns nothing.
+    """
+    x, _, z = np.eye(3)
+
+    def across(wanted: np.ndarray, square_to: np.ndarray) -> np.ndarray:
+        for start in (wanted, *np.eye(3)):
+            part = start - (start @ square_to) * square_to
+            if part @ part > 0.25:
+                return np.asarray(part / np.sqrt(part @ part))
+        raise AssertionError("one of three axes is far from any direction")
 
     def towards(row: np.ndarray, order: tuple[int, ...]) -> np.ndarray:
         for k in order:
@@ -234,6 +246,12 @@ def _orderly(axes: np.ndarray) -> np.ndarray:
                 return row if row[k] > 0 else -row
         return row
 
-    last = towards(axes[2], (2, 0, 1))
-    first = towards(axes[0], (0, 1, 2))
+    low_pair, high_pair = (np.diff(moments) < 1e-9 * moments[2]).tolist()
+    if low_pair and high_pair:
+        return np.eye(3)
+    first, last = towards(axes[0], (0, 1, 2)), towards(axes[2], (2, 0, 1))
+    if low_pair:
+        first = across(x, last)
+    elif high_pair:
+        last = across(z, first)
     return np.array([first, np.cross(last, first), last])

@@ -54,6 +54,8 @@ def _quick(lines: Lines) -> Parts | None:
         return None
     joined = b"\n".join(f_text)
     if b"/" in joined:
+        if b" /" in joined or joined.startswith(b"/") or b"\n/" in joined:
+            return None
         f_text = _ATTRIBUTES.sub(b"", joined).split(b"\n")
     facets = quick_whole_numbers(f_text, 3)
     if facets is None or not ((facets >= 1) & (facets <= len(vertices))).all():
@@ -111,7 +113,7 @@ def _careful(lines: Lines) -> Parts:
 
 
 def _index(lines: Lines, number: int, word: bytes) -> int:
-    index = index_number(lines, number, word.split(b"/", 1)[0])
+    index = index_number(lines, number, word.split(b"/", 1)[0], word)
     if index == 0:
         raise lines.error(number, "corner 0 names no vertex: OBJ counts from 1")
     return index

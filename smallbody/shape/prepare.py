@@ -27,22 +27,22 @@ def prepare_shape(source: ShapeSource) -> Shape:
 
     source : the [shape] part of a body description
     raises : ShapeError, if the shape cannot be read or used
-    warns : Note, when the file's z axis is more than 5 degrees from the axis of greatest moment, when the body is
-        larger than 1000 km (probably wrong units), and when a sphere is given no diameter (1 km is taken)
+    warns : Note, for faults that stop nothing, when the file's z axis is more than 5 degrees from the axis of greatest
+        moment, and when the body is larger than 1000 km (probably wrong units)
     """
     metres = METRES[source.length_unit]
     if source.file is not None:
         shape = read_shape(source.file, length_unit=source.length_unit)
     elif source.sphere_facets is not None:
-        if source.diameter_km is None:
-            warnings.warn("the sphere is given no diameter_km: 1 km is taken", Note, stacklevel=2)
         shape = make_shape("sphere", source.sphere_facets)
     elif source.ellipsoid_axes is not None:
         axes_km = [a * metres / 1000.0 for a in source.ellipsoid_axes]
         shape = make_shape("ellipsoid", source.facets or 2000, axes=axes_km)
     else:
         raise ShapeError("[shape] names no file, sphere_facets or ellipsoid_axes")
-    require_usable(shape)
+    for fault in require_usable(shape):
+        name = f"{shape.source.name}: " if shape.source is not None else ""
+        warnings.warn(f"{name}{fault.message}", Note, stacklevel=2)
 
     if source.diameter_km is not None:
         shape = shape.scaled(1000.0 * source.diameter_km / shape.diameter_m)

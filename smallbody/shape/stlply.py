@@ -49,7 +49,7 @@ def parse_stl(data: bytes, name: str) -> Shape:
                 f"{name} announces {announced:,} facets, {_STL_HEAD + _STL_FACET * announced:,} bytes of binary STL; "
                 f"it has {len(data):,} (is the file cut short?)"
             )
-        facet_lines = _check_stl_text(Lines(data, name))
+        data, facet_lines = _check_stl_text(Lines(data, name))
     vertices, facets = _load(data, name, "stl")
     if not len(facets):
         raise ShapeError(f"{name} holds no facets")
@@ -82,12 +82,12 @@ _STL_GRAMMAR = (
 )  # fmt: skip
 
 
-def _check_stl_text(lines: Lines) -> np.ndarray:
-    """The lines of the facets of a text STL that has each statement where it belongs.
+def _check_stl_text(lines: Lines) -> tuple[bytes, np.ndarray]:
+    """A plain copy of a text STL that has each statement where it belongs, and the lines of its facets.
 
     raises : ShapeError
     """
-    facets = []
+    facets, plain = [], [b"solid"]
     expected, closed = 0, True
     for number, line in enumerate(lines.lines, start=1):
         words = line.lower().split()
@@ -109,12 +109,13 @@ def _check_stl_text(lines: Lines) -> np.ndarray:
                     raise lines.error(number, f"a vertex takes three coordinates, here are {len(words) - 1}")
                 for word in words[1:]:
                     finite_number(lines, number, word, "coordinate", fortran=False)
+            plain.append(b" ".join(words if due == (b"vertex",) else due) + (b" 0 0 0" if expected == 0 else b""))
             expected = (expected + 1) % len(_STL_GRAMMAR)
     if not closed:
         raise lines.error(len(lines.lines), "the file ends before endsolid (is it cut short?)")
     if not facets:
         raise lines.error(None, "holds no facets")
-    return np.array(facets)
+    return b"\n".join([*plain, b"endsolid", b""]), np.array(facets)
 
 
 def parse_ply(data: bytes, name: str) -> Shape:
@@ -127,10 +128,10 @@ def parse_ply(data: bytes, name: str) -> Shape:
     head = _PlyHead(data, name)
     vertex_lines = facet_lines = None
     if head.text:
-        vertex_lines, facet_lines, corners = _check_ply_text(head, data)
+        body, vertex_lines, facet_lines, corners = _check_ply_text(head, data)
     else:
-        corners = _check_ply_binary(head, data)
-    vertices, facets = _load(data, name, "ply")
+        body, corners = data[head.size :], _check_ply_binary(head, data)
+    vertices, facets = _load(head.plain() + body, name, "ply")
     if len(vertices) != head.n_vertices or len(facets) != head.n_facets * (corners - 2):
         raise ShapeError(
             f"{name} announces {head.n_vertices:,} vertices and {head.n_facets:,} facets; "
@@ -190,6 +191,14 @@ class _PlyHead:
                 f"announces {self.n_vertices:,} vertices and {self.n_facets:,} facets; a closed surface has 4 and 4",
             )
 
+    def plain(self) -> bytes:
+        """The header again, without comments and blank lines."""
+        text = ["ply", f"format {self.format} 1.0"]
+        for name, count, properties in self.elements:
+            text.append(f"element {name} {count}")
+            text += [f"property {' '.join(p)}" for p in properties]
+        return "\n".join([*text, "end_header", ""]).encode("ascii", "replace")
+
     def _statement(self, number: int, words: list[bytes]) -> None:
         if not words or words[0] in (b"comment", b"obj_info") or (number == 1 and words == [b"ply"]):
             return
@@ -212,8 +221,8 @@ class _PlyHead:
             raise self.lines.error(number, f"{self.lines.show(b' '.join(words))} is no statement of a PLY header")
 
 
-def _check_ply_text(head: _PlyHead, data: bytes) -> tuple[np.ndarray, np.ndarray, int]:
-    """Lines of vertices and facets, and corners per facet, of a text PLY whose rows are as announced."""
+def _check_ply_text(head: _PlyHead, data: bytes) -> tuple[bytes, np.ndarray, np.ndarray, int]:
+    """The rows of a text PLY that are as announced, the lines of vertices and of facets, and corners per facet."""
     lines = Lines(data, head.name)
     body = enumerate(lines.lines[head.n_lines :], start=head.n_lines + 1)
     rows = [(n, line) for n, line in body if line.strip()]
@@ -247,7 +256,8 @@ def _check_ply_text(head: _PlyHead, data: bytes) -> tuple[np.ndarray, np.ndarray
         for word in words:
             finite_number(lines, number, word, "number", fortran=False)
     numbers = np.array([n for n, _ in rows])
-    return numbers[: head.n_vertices], numbers[head.n_vertices :], size
+    rest = b"\n".join([*(b" ".join(line.split()) for _, line in rows), b""])
+    return rest, numbers[: head.n_vertices], numbers[head.n_vertices :], size
 
 
 def _check_ply_binary(head: _PlyHead, data: bytes) -> int:

@@ -93,13 +93,14 @@ def whole_number(lines: Lines, number: int, word: bytes, what: str) -> int:
     return int(digits)
 
 
-def index_number(lines: Lines, number: int, word: bytes) -> int:
-    """A corner's vertex number, perhaps negative, in a word of a line."""
+def index_number(lines: Lines, number: int, word: bytes, shown: bytes = b"") -> int:
+    """A corner's vertex number, perhaps negative, in a word of a line; `shown` is what messages call it."""
+    shown = shown or word
     digits = word[1:] if word[:1] in (b"-", b"+") else word
     if not digits.isdigit():
-        raise lines.error(number, f"corner {lines.show(word)} is not a vertex number")
+        raise lines.error(number, f"corner {lines.show(shown)} is not a vertex number")
     if len(digits) > 18 or int(digits) > LARGEST:
-        raise lines.error(number, f"corner {lines.show(word)} is larger than any vertex number")
+        raise lines.error(number, f"corner {lines.show(shown)} is larger than any vertex number")
     return -int(digits) if word[:1] == b"-" else int(digits)
 
 
