@@ -1,3 +1,4 @@
+# mypy: ignore-errors
 """Kernels of the periodic lag solver: surface temperatures of a block of facets, in lockstep.
 
 At every place p and rotation node j, per facet (the last axis, LANES of them, one vector: see `_lanes`):

@@ -186,7 +186,9 @@ class _Heat:
     seen: _Seen
     drawn: _Seen
     run: HeatRun
-    shown_turns: np.ndarray  # body longitude of the Sun at the instants whose temperatures are kept
+    to_sun: np.ndarray  # (k, 3) towards the Sun, body frame, at the instants whose temperatures are kept
+    turns: np.ndarray  # (k,) its body longitude then, in turns
+    flux: np.ndarray  # (k,) sunlight then, W/m2
 
     @property
     def gained_w(self) -> float:
@@ -210,7 +212,16 @@ def _heat(world: _World, horizons: Horizons, count: int, meter: Meter, *, steps:
     albedo = world.body.surface.bond_albedo
     run = push_of_heat(world.shape, horizons, solver, sun, albedo, shown=0 if keep else None, meter=meter)
     seen = _resolve(run.push, places, world)
-    return _Heat(seen, seen, run, -np.arange(horizons.columns) / horizons.columns)
+    turns = -np.arange(horizons.columns) / horizons.columns
+    flux = np.full(len(turns), places.flux_w_m2[0])
+    return _Heat(seen, seen, run, _towards(sun.sin_latitude[0], turns), turns, flux)
+
+
+def _towards(sin_latitude: np.ndarray | float, turns: np.ndarray) -> np.ndarray:
+    cos_latitude = np.sqrt(np.maximum(0.0, 1 - np.square(sin_latitude)))
+    angle = 2 * np.pi * turns
+    z = np.broadcast_to(sin_latitude, turns.shape)
+    return np.stack([cos_latitude * np.cos(angle), cos_latitude * np.sin(angle), z], axis=1)
 
 
 def _heat_on_course(world: _World, horizons: Horizons, places: Places, meter: Meter, steps: int, keep: bool) -> _Heat:
@@ -248,8 +259,10 @@ def _heat_on_course(world: _World, horizons: Horizons, places: Places, meter: Me
         np.stack([np.bincount(bins, x[:, k], minlength=len(m)) for k in range(3)], axis=1) / np.maximum(per, 1)
         for x in (seen.force, seen.torque)
     )
-    turns = way.turns[shown] if shown is not None else way.turns[:0]
-    return _Heat(seen, _Seen(places, force, torque), run, turns)
+    kept = shown if shown is not None else np.empty(0, int)
+    turns = way.turns[kept]
+    u = _towards(way.sin_latitude[kept], turns)
+    return _Heat(seen, _Seen(places, force, torque), run, u, turns, way.places.flux_w_m2[kept])
 
 
 def _lying(way: Course, turn: float) -> Course:
@@ -259,6 +272,18 @@ def _lying(way: Course, turn: float) -> Course:
         way, turns=way.turns - turn, frame=np.array([[c, s, 0.0], [-s, c, 0.0], [0.0, 0.0, 1.0]]) @ way.frame
     )
 
+
+WHERE_FROM = {
+    "rotation_nodes": "the time nodes of a rotation",
+    "orbit_places": "the places of the orbit",
+    "lit_samples": "the edges of shadows",
+}
+RAISE = {
+    "rotation_nodes": "raise solver.rotation_nodes",
+    "orbit_places": "raise solver.orbit_places and solver.light_places",
+    "lit_samples": "raise solver.lit_samples",
+}
+NO_MORE = "solver.lit_samples is at its most: the same surface cut into smaller facets would lower it"
 
 Table = dict[str, dict[str, float]]  # source or "total" -> rate -> value
 
@@ -543,12 +568,9 @@ def _advice(
         size = max(abs(values[key]), floor)
         if errors[key] > WORTH_SAYING * size:
             cause = max(by_cause, key=lambda c: by_cause[c]["total"][key])
-            also = " and solver.light_places" if cause == "orbit_places" else ""
-            if cause == "rotation_nodes" and world.body.solver.method == "march":
-                also = " and solver.march_steps"
             said.append(
-                f"{key}: numerical error is {100 * errors[key] / size:.1f} %, most of it from solver.{cause}; "
-                f"raise solver.{cause}{also}"
+                f"{key}: numerical error is {100 * errors[key] / size:.1f} %, most of it from {WHERE_FROM[cause]}; "
+                + (NO_MORE if cause == "lit_samples" and world.body.solver.lit_samples == 16 else RAISE[cause])
             )
     for key, floor in floors.items():
         size = max(abs(values[key]), floor)
@@ -566,14 +588,12 @@ def _arrays(
     places = light.seen["direct"].places
     sun = world.sun(places)
     first = heat.drawn.places
-    turns = heat.shown_turns
-    u = np.stack([np.cos(2 * np.pi * turns), np.sin(2 * np.pi * turns)], axis=1) * world.sun(first).cos_latitude[0]
-    u = np.concatenate([u, np.full((len(u), 1), world.sun(first).sin_latitude[0])], axis=1)
-    strength = first.flux_w_m2[0] * (1 - world.body.surface.bond_albedo)
+    turns, u = heat.turns, heat.to_sun
+    strength = heat.flux * (1 - world.body.surface.bond_albedo)
     absorbed = np.empty((len(shape.facets), len(u)), np.float32)
     for start in range(0, len(u), 16):
         part = slice(start, start + 16)
-        absorbed[:, part] = np.maximum(0.0, shape.normals @ u[part].T) * horizons.sees(u[part]) * strength
+        absorbed[:, part] = np.maximum(0.0, shape.normals @ u[part].T) * horizons.sees(u[part]) * strength[part]
     # the delay of the heat is solved at fewer places: its push is carried to the light's places by a periodic spline
     late = _between(heat.drawn, places)
     force = {

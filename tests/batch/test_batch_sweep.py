@@ -278,7 +278,7 @@ import smallbody, smallbody.push
 from fake_drift import BODY, Engine, not_above
 from smallbody.batch import sweep
 smallbody.push.drift = Engine(seconds=0.01, fails=not_above(120.0))
-sys.modules["smallbody.batch.sweep"].COMMIT_S = 0.02
+sys.modules["smallbody.batch.grid"].COMMIT_S = 0.02
 print("ready", flush=True)
 try:
     sweep(BODY, {"spin.obliquity_deg": range(0, 180, 9), "surface.thermal_inertia": [50, 1000]}, out=sys.argv[2])
