@@ -2,7 +2,8 @@
 
     python tests/shape/fuzz_readers.py --files 100000 --seed 1
 
-Files stay in memory. What is accepted is also checked and, where sound, weighed. Exit code 1 if anything went wrong.
+Files stay in memory. What is accepted is also checked; sound shapes are weighed, written and read again, others are
+mended or refused. Exit code 1 if anything went wrong.
 """
 
 from __future__ import annotations
@@ -18,7 +19,7 @@ from dataclasses import dataclass, field
 import numpy as np
 
 from smallbody.errors import Note, ShapeError
-from smallbody.shape import Shape, check_shape, make_shape, parse_shape, shape_bytes
+from smallbody.shape import Shape, check_shape, make_shape, mend_shape, parse_shape, shape_bytes
 
 SLOW_S = 2.0
 WORDS = [
@@ -35,6 +36,7 @@ class Tally:
 
     accepted: Counter[str] = field(default_factory=Counter)
     sound: Counter[str] = field(default_factory=Counter)
+    mended: Counter[str] = field(default_factory=Counter)
     refused: Counter[str] = field(default_factory=Counter)
     wrong: list[str] = field(default_factory=list)
     files: int = 0
@@ -172,6 +174,11 @@ def _throw_one(name: str, data: bytes, k: int, tally: Tally) -> None:
         tally.accepted[kind] += 1
         if _is_sound(shape):
             tally.sound[kind] += 1
+            again = parse_shape(shape_bytes(shape, ".ply", "m"), "x.ply")
+            if again.sha256 != shape.sha256:
+                raise AssertionError("written and read again it is another shape")
+        elif _was_mended(shape):
+            tally.mended[kind] += 1
     except ShapeError as error:
         tally.refused[kind] += 1
         text = str(error)
@@ -194,17 +201,26 @@ def _is_sound(shape: Shape) -> bool:
     return True
 
 
+def _was_mended(shape: Shape) -> bool:
+    try:
+        mended, done = mend_shape(shape)
+    except ShapeError:
+        return False
+    if not done or not _is_sound(mended):
+        raise AssertionError(f"mended ({'; '.join(done)}) it is not sound")
+    return True
+
+
 def report(tally: Tally) -> str:
     """A few lines for people."""
     rate = tally.files / max(tally.seconds, 1e-9)
     lines = [f"{tally.files:,} files in {tally.seconds:.0f} s ({rate:.0f} a second), slowest {tally.slowest_s:.2f} s"]
-    for kind in sorted({*tally.accepted, *tally.refused}):
-        counts = (
-            f"{tally.accepted[kind]:,} accepted ({tally.sound[kind]:,} of them sound), {tally.refused[kind]:,} refused"
+    for kind in [*sorted({*tally.accepted, *tally.refused}), "all"]:
+        n, sound, mended, refused = (
+            c.total() if kind == "all" else c[kind] for c in (tally.accepted, tally.sound, tally.mended, tally.refused)
         )
-        lines.append(f"  {kind}: {counts}")
-    total = f"{tally.accepted.total():,} accepted ({tally.sound.total():,} sound), {tally.refused.total():,} refused"
-    lines.append(f"  all: {total}, {len(tally.wrong)} wrong")
+        lines.append(f"  {kind}: {n:,} accepted ({sound:,} sound, {mended:,} could be mended), {refused:,} refused")
+    lines.append(f"  {len(tally.wrong)} wrong")
     return "\n".join([*lines, *tally.wrong[:20]])
 
 
