@@ -113,8 +113,8 @@ def test_the_rates_do_not_depend_on_how_many_places_there_are():
 
 def test_the_published_pair_of_transverse_acceleration_and_drift():
     """(101955) Bennu: -19.0 +- 0.1 x 1e-4 au/Myr (Chesley et al. 2014, Icarus 235, 5, abstract) and A2 = -4.55e-14
-    au/d2 belong together by da/dt = 2 A2 (1 au)^2/(n a^2 (1 - e^2)) (Farnocchia et al. 2013, Icarus 224, 1; the orbit, a =
-    1.126 au and e = 0.204, from memory)."""
+    au/d2 belong together by da/dt = 2 A2 (1 au)^2/(n a^2 (1 - e^2)) (Farnocchia et al. 2013, Icarus 224, 1; the orbit,
+    a = 1.126 au and e = 0.204, from memory)."""
     assert drift_of_transverse(-4.55e-14, 1.126 * AU_M, 0.204) == pytest.approx(-19.0e-4, abs=0.1e-4)
 
 
