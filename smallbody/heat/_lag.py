@@ -69,11 +69,12 @@ def _sweep(fresh, t, absorbed, weights, es, sink, moments):
                 a1 = a1 - weights[base + i - 1] * x
                 a2 = a2 - weights[base + i - 2] * x
                 a3 = a3 - weights[base + i - 3] * x
-        else:  # nodes are even: two are left
+        else:  # at most three are left; sums of nodes that are not there are not used
             for i in range(nodes):
                 x = load(t, i)
                 a0 = a0 - weights[base + i] * x
                 a1 = a1 - weights[base + i - 1] * x
+                a2 = a2 - weights[base + i - 2] * x
         for k in range(few):
             x = load(t, j + k)
             c = larger(a0 + w0 * x, zero)
