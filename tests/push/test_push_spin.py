@@ -89,8 +89,8 @@ def test_light_that_arrives_gives_concave_bodies_the_less_spin_torque_the_better
 # Seen in a mirror that holds the spin pole and the orbit normal, a body spins and orbits the other way round. Where
 # heat is given back at once that does not matter to the means, and neither does the sense of rotation. A torque is an
 # axial vector: in such a mirror its parts in the mirror's plane (along the pole, towards the orbit normal) flip and the
-# part across stays. A force keeps its parts in the plane; places at true anomaly f and -f change places. With the pole's
-# azimuth and the argument of perihelion 0 that makes:
+# part across stays. A force keeps its parts in the plane; places at true anomaly f and -f change places. With the
+# pole's azimuth and the argument of perihelion 0 that makes:
 FLIP = ("da_dt_au_per_myr", "da_dt_m_per_yr", "de_dt_per_myr", "dnode_dt_deg_per_myr", "domega_dt_rad_per_d2",
         "dobliquity_dt_deg_per_myr")  # fmt: skip
 STAY = ("di_dt_deg_per_myr", "dperi_dt_deg_per_myr", "dmean_anomaly_dt_deg_per_myr", "dazimuth_dt_deg_per_myr")
