@@ -1,3 +1,4 @@
+# mypy: ignore-errors
 """Kernels: which stretches of each meridian of the sky are blocked, seen from points on the facets.
 
 The sky of a point is cut into meridians (half-planes through the point that contain the body's z axis). Where a
@@ -15,6 +16,7 @@ from smallbody.light._tree import _above_plane
 
 MOST = 12  # separate blocked intervals kept on one meridian; more are merged over their narrowest gap
 TOUCH = 1e-9  # intervals closer than this in sin(latitude) are one: neighbours share an edge up to round-off
+BEYOND = 2.0  # end of an interval that holds the pole
 
 
 @njit(cache=True, nogil=True, inline="always")
@@ -100,7 +102,7 @@ def _block_sky(
     corners (f, 3, 3) m; normals (f, 3); heights (f,): n.x of each facet's plane, m; samples (f, s, 3): points, m;
     shifts (s,): meridian c of sample s stands at 2 pi (c + shifts[s])/columns; cosine, sine (s, c) of that angle;
     slack: what lies lower over the facet's plane than this is not an obstacle, m.
-    Out: low, high (b, s, c, MOST + 2) sin(latitude), counts (b, s, c).
+    Out: low, high (b, s, c, MOST + 2) sin(latitude), +-BEYOND where an interval holds the pole; counts (b, s, c).
     """
     columns = cosine.shape[1]
     for f in range(start, end):
@@ -195,7 +197,12 @@ def _block_sky(
                     if r1 == 0.0 or r2 == 0.0:
                         continue
                     s1, s2 = z1 / r1, z2 / r2
-                    counts[b, s, c] = _join(low[b, s, c], high[b, s, c], counts[b, s, c], min(s1, s2), max(s1, s2))
+                    lo, hi = min(s1, s2), max(s1, s2)
+                    if lo <= -1.0:  # past the pole, so that a Sun on it stands inside
+                        lo = -BEYOND
+                    if hi >= 1.0:
+                        hi = BEYOND
+                    counts[b, s, c] = _join(low[b, s, c], high[b, s, c], counts[b, s, c], lo, hi)
 
 
 @njit(cache=True, nogil=True)

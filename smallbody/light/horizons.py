@@ -7,9 +7,11 @@ import os
 import tempfile
 import time
 import warnings
-from dataclasses import dataclass
+from contextlib import suppress
+from dataclasses import dataclass, replace
 from functools import cached_property
 from pathlib import Path
+from typing import Any
 
 import numpy as np
 
@@ -17,11 +19,13 @@ from smallbody.errors import Note, SizeMismatch
 from smallbody.shape import Shape, facet_samples
 from smallbody.workers import SILENT, Meter, share
 
-LAYOUT = 2  # of the cached table; part of its name, so that an older table is never mistaken for a newer one
+LAYOUT = 3  # of the cached table; part of its name, so that an older table is never mistaken for a newer one
 WORTH_KEEPING_S = 1.0  # a table that took less to build is not written to the cache
 CACHE_BYTES = 2 << 30  # the cache is trimmed to this, oldest tables first
 SLACK = 1e-9  # in body diameters: coplanar neighbours stand this much over each other by round-off
 BLOCK = 64  # facets in a block of work
+ROWS = 1024  # rows of the table that are taken in hand at once where a coarser one is drawn from it
+LEFT_OVER_S = 24 * 3600.0  # temporary files in the cache that are older were left by a process that was killed
 
 
 @dataclass(frozen=True)
@@ -32,8 +36,9 @@ class Horizons:
     shifts : (s,) float
     samples : (f, s, 3) the points, m
     rows : (f,) int32, -1 for a facet with nothing over its own plane, else its row in the table
-    starts : (r*s*columns + 1,) int64, where the intervals of a meridian begin in `low` and `high`
-    low, high : (n,) float32, sin(latitude) of the ends of the blocked intervals, ascending on each meridian
+    starts : (r*s*columns + 1,) int32, int64 if need be; where the intervals of a meridian begin in `low` and `high`
+    low, high : (n,) float32, sin(latitude) of the ends of the blocked intervals, ascending on each meridian; -2 or 2
+        where an interval holds the pole
     """
 
     columns: int
@@ -61,36 +66,28 @@ class Horizons:
 
     def thinned(self) -> Horizons:
         """The same table with every second meridian only: what a coarser run would have seen."""
-        rows, s = len(self.shadowed_facets), len(self.shifts)
-        per = np.diff(self.starts).reshape(rows, s, self.columns)
-        keep = np.zeros(per.shape, bool)
-        keep[:, :, ::2] = True
-        of_interval = np.repeat(keep.ravel(), per.ravel())
-        return Horizons(
-            columns=self.columns // 2,
-            shifts=self.shifts / 2,
-            samples=self.samples,
-            rows=self.rows,
-            starts=np.concatenate([[0], np.cumsum(per[:, :, ::2].ravel())]).astype(np.int64),
-            low=self.low[of_interval],
-            high=self.high[of_interval],
-        )
+        return self._only(slice(None), slice(None, None, 2), columns=self.columns // 2, shifts=self.shifts / 2)
 
     def sampled_coarser(self) -> Horizons:
         """The same table asked at a quarter of the sample points: those of the next coarser set, which it contains."""
-        rows, s = len(self.shadowed_facets), len(self.shifts)
-        per = np.diff(self.starts).reshape(rows, s, self.columns)
-        keep = np.zeros(per.shape, bool)
-        keep[:, 3::4] = True
-        of_interval = np.repeat(keep.ravel(), per.ravel())
-        return Horizons(
-            columns=self.columns,
-            shifts=self.shifts[3::4],
-            samples=self.samples[:, 3::4],
-            rows=self.rows,
-            starts=np.concatenate([[0], np.cumsum(per[:, 3::4].ravel())]).astype(np.int64),
-            low=self.low[of_interval],
-            high=self.high[of_interval],
+        few = slice(3, None, 4)
+        return self._only(few, slice(None), samples=self.samples[:, few], shifts=self.shifts[few])
+
+    def _only(self, points: slice, meridians: slice, **changes: Any) -> Horizons:
+        """The intervals of some samples and meridians. Block by block: whole tables beside this one cost memory."""
+        s, per_row = len(self.shifts), len(self.shifts) * self.columns
+        counts, low, high = [np.empty(0, np.uint8)], [self.low[:0]], [self.high[:0]]
+        for first in range(0, len(self.shadowed_facets), ROWS):
+            starts = self.starts[first * per_row : (first + ROWS) * per_row + 1]
+            per = np.diff(starts).reshape(-1, s, self.columns).astype(np.uint8)
+            keep = np.zeros(per.shape, bool)
+            keep[:, points, meridians] = True
+            of_interval = np.repeat(keep.ravel(), per.ravel())
+            counts.append(per[:, points, meridians].ravel())
+            low.append(self.low[starts[0] : starts[-1]][of_interval])
+            high.append(self.high[starts[0] : starts[-1]][of_interval])
+        return replace(
+            self, starts=_starts(np.concatenate(counts)), low=np.concatenate(low), high=np.concatenate(high), **changes
         )
 
     def sees(self, directions: np.ndarray) -> np.ndarray:
@@ -98,20 +95,32 @@ class Horizons:
 
         directions : (k, 3) vectors from the body to the Sun, body frame, any length. Whether the facet is turned to
             the Sun is not asked here. Between tabulated meridians the nearer one answers.
-        raises : SizeMismatch, if the directions are not three numbers each
+        raises : SizeMismatch, if the directions are not three numbers each; ValueError, if one has no length
         """
         from smallbody.light._horizons import _sees
 
         d = np.atleast_2d(np.asarray(directions, float))
-        if d.shape[1] != 3:
+        if d.ndim != 2 or d.shape[1] != 3:
             raise SizeMismatch(f"directions are (k, 3), here {d.shape}")
-        d = d / np.linalg.norm(d, axis=1, keepdims=True)
+        length = np.linalg.norm(d, axis=1, keepdims=True)
+        if not ((length > 0) & np.isfinite(length)).all():
+            bad = int(np.flatnonzero(~((length > 0) & np.isfinite(length)))[0])
+            raise ValueError(f"direction {bad} is {d[bad].tolist()}; a direction has a length above zero")
+        d = d / length
         out = np.empty((len(self.rows), len(d)))
         turns = np.arctan2(d[:, 1], d[:, 0]) / (2 * np.pi)
         _sees(
             d[:, 2].copy(), turns, self.rows, self.starts, self.low, self.high, self.shifts, self.columns, out
         )  # fmt: skip
         return out
+
+
+def _starts(counts: np.ndarray) -> np.ndarray:
+    """Where each meridian's intervals begin, from how many it has, (n,) uint8: (n + 1,)."""
+    total = int(counts.sum(dtype=np.int64))
+    starts = np.zeros(len(counts) + 1, np.int32 if total < 2**31 else np.int64)
+    np.cumsum(counts, out=starts[1:], dtype=starts.dtype)
+    return starts
 
 
 def no_shadows(shape: Shape, columns: int = 64) -> Horizons:
@@ -122,7 +131,7 @@ def no_shadows(shape: Shape, columns: int = 64) -> Horizons:
         shifts=np.zeros(1),
         samples=shape.centroids_m[:, None, :],
         rows=np.full(len(shape.facets), -1, np.int32),
-        starts=np.zeros(1, np.int64),
+        starts=np.zeros(1, np.int32),
         low=none,
         high=none,
     )
@@ -194,20 +203,18 @@ def _tabulate(shape: Shape, columns: int, shifts: np.ndarray, samples: np.ndarra
         done[start] = counts, packed_low, packed_high
 
     share(work, f, BLOCK, meter=meter, task="horizons")
-    parts = [done[k] for k in sorted(done)]
-    counts = np.concatenate([p[0] for p in parts])
+    counts = np.concatenate([done[k][0] for k in sorted(done)])
     shadowed = counts.any(axis=(1, 2))
     rows = np.full(f, -1, np.int32)
     rows[shadowed] = np.arange(shadowed.sum(), dtype=np.int32)
-    return Horizons(
-        columns=columns,
-        shifts=shifts,
-        samples=samples,
-        rows=rows,
-        starts=np.concatenate([[0], np.cumsum(counts[shadowed].ravel(), dtype=np.int64)]).astype(np.int64),
-        low=np.concatenate([p[1] for p in parts]),
-        high=np.concatenate([p[2] for p in parts]),
-    )
+    starts = _starts(counts[shadowed].ravel())
+    low, high = np.empty(starts[-1], np.float32), np.empty(starts[-1], np.float32)
+    at = 0
+    for k in sorted(done):
+        _, part_low, part_high = done.pop(k)  # let go of, so that the table is not held twice
+        low[at : at + len(part_low)], high[at : at + len(part_low)] = part_low, part_high
+        at += len(part_low)
+    return Horizons(columns=columns, shifts=shifts, samples=samples, rows=rows, starts=starts, low=low, high=high)
 
 
 def _cache_file(key: str) -> Path | None:
@@ -222,43 +229,60 @@ def _cache_file(key: str) -> Path | None:
 
 
 def _from_cache(file: Path, columns: int, shifts: np.ndarray, samples: np.ndarray) -> Horizons | None:
-    if not file.exists():
-        return None
     try:
         with np.load(file, allow_pickle=False) as z:
-            kept = Horizons(columns, shifts, samples, z["rows"], z["starts"], z["low"], z["high"])
-        rows = int(kept.rows.max(initial=-1)) + 1
+            rows, counts, low, high = z["rows"], z["counts"], z["low"], z["high"]
         whole = (
-            kept.rows.shape == (len(samples),)
-            and kept.starts.shape == (rows * len(shifts) * columns + 1,)
-            and kept.low.shape == kept.high.shape == (int(kept.starts[-1]),)
+            (rows.dtype, counts.dtype, low.dtype, high.dtype) == (np.int32, np.uint8, np.float32, np.float32)
+            and rows.shape == (len(samples),)
+            and np.array_equal(rows[rows >= 0], np.arange(np.count_nonzero(rows >= 0)))
+            and counts.shape == (np.count_nonzero(rows >= 0) * len(shifts) * columns,)
+            and low.shape == high.shape == (int(counts.sum(dtype=np.int64)),)
         )
+    except FileNotFoundError:
+        return None
     except Exception:  # whatever a damaged file makes of the reader: the table is made anew
         whole = False
     if not whole:
         warnings.warn(f"{file}: this cached table of horizons is damaged; it is made anew", Note, stacklevel=3)
         return None
-    os.utime(file)
-    return kept
+    with suppress(OSError):  # a cache that others keep may be read-only
+        os.utime(file)
+    return Horizons(columns, shifts, samples, rows, _starts(counts), low, high)
 
 
 def _to_cache(file: Path, table: Horizons) -> None:
     """Whole or not at all, and two writers do no harm: a temporary file is renamed."""
+    counts = np.diff(table.starts).astype(np.uint8)
     try:
         file.parent.mkdir(parents=True, exist_ok=True)
-        handle, name = tempfile.mkstemp(dir=file.parent, suffix=".part")
+        handle, name = tempfile.mkstemp(dir=file.parent, prefix="horizons-", suffix=".part")
         try:
             with os.fdopen(handle, "wb") as out:
-                np.savez(out, rows=table.rows, starts=table.starts, low=table.low, high=table.high)
+                np.savez(out, rows=table.rows, counts=counts, low=table.low, high=table.high)
             os.replace(name, file)
         except BaseException:
             os.unlink(name)
             raise
-        kept = sorted(file.parent.glob("horizons-*.npz"), key=lambda p: p.stat().st_mtime, reverse=True)
-        total = 0
-        for old in kept:
-            total += old.stat().st_size
-            if total > CACHE_BYTES:
-                old.unlink(missing_ok=True)
     except OSError as error:
         warnings.warn(f"horizons are not kept in {file.parent}: {error.strerror or error}", Note, stacklevel=3)
+        return
+    _trim(file.parent)
+
+
+def _trim(folder: Path) -> None:
+    """Delete the tables used longest ago until the rest fit, and what killed processes left half written."""
+    kept = []
+    for file in folder.glob("horizons-*"):
+        with suppress(OSError):  # another process may be trimming too
+            about = file.stat()
+            if file.suffix == ".npz":
+                kept.append((about.st_mtime, about.st_size, file))
+            elif time.time() - about.st_mtime > LEFT_OVER_S:
+                file.unlink()
+    total = 0
+    for _, size, file in sorted(kept, reverse=True):
+        total += size
+        if total > CACHE_BYTES:
+            with suppress(OSError):
+                file.unlink(missing_ok=True)
