@@ -16,7 +16,8 @@ COARSEST = 5  # steps of the first grid
 ROUNDS = 80  # of moving vertices on each grid but the last
 LAST_ROUNDS = 32  # on the last, between swaps of edges
 SLIVER = 0.45  # quality below which no facet is pressed to reach a crease
-REACH = 0.45  # vertices nearer to a crease than this part of their distance from each other are put on it
+CREASE_ROUNDS = 10  # of putting vertices on creases and swapping edges along them
+REACH = 0.5  # vertices nearer to a crease than this part of their distance from each other are put on it
 STEP = 0.8  # of the way to the middle of the facets around
 
 
@@ -121,7 +122,7 @@ def _finish(
         swap(True)
         u = _spread(radius, u, f, 4, density)
     if creases is not None:
-        for _ in range(4):
+        for _ in range(CREASE_ROUNDS):
             number, there = creases(u)
             gap = np.sqrt(((there - u) ** 2).sum(axis=1))
             on = np.where((gap < REACH * _spacing(radius, u, f)) & (number > 0), number, 0)
