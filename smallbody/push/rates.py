@@ -288,8 +288,16 @@ NO_MORE = "solver.lit_samples is at its most: the same surface cut into smaller 
 Table = dict[str, dict[str, float]]  # source or "total" -> rate -> value
 
 
-def _rates(world: _World, light: Light, lag: _Seen) -> tuple[Table, np.ndarray]:
-    """All rates by source and in total; and the mean coefficients A1, A2, A3."""
+@dataclass(frozen=True)
+class _Rates:
+    """All rates, by source and in total; and the mean coefficients A1, A2, A3."""
+
+    rates: Table
+    coefficients: np.ndarray
+
+
+def _rates(world: _World, light: Light, lag: _Seen) -> _Rates:
+    """What one solution of light and heat makes of orbit and spin."""
     parts = {k: s.rates(world) for k, s in light.items()}
     late = lag.rates(world)
     out: Table = {
@@ -299,20 +307,29 @@ def _rates(world: _World, light: Light, lag: _Seen) -> tuple[Table, np.ndarray]:
     }
     out["total"] = {k: sum(out[s][k] for s in SOURCES) for k in late}
     coefficients = sum((s.coefficients(world) for s in light.values()), lag.coefficients(world))
-    return out, np.asarray(coefficients)
+    return _Rates(out, np.asarray(coefficients))
 
 
-# How much of the change from a coarser repeat is taken for the error of the finer run. A second-order method leaves a
-# third of it; shadow edges converge like noise and leave more. tests/bench/bench_errors.py measures what is left.
+# Twice the nodes quarter the error of the heat, so a third of the change goes on to where no time step would be; that
+# third is also taken for its error.
+OVER_SHOT = 1 / 3
+# How much of the change from a coarser repeat is taken for the error of the finer one. Shadow edges converge like
+# noise. tests/bench/bench_errors.py measures how often that covers the truth.
 LEFT_OF = {"rotation_nodes": 0.5, "orbit_places": 0.5, "lit_samples": 0.35}
 
+Change = tuple[_Rates, _Rates, float]  # a solution, a coarser one, and how much of the change is taken for error
 
-def _errors(fine: Table, coarser: Mapping[str, tuple[Table, Table]]) -> tuple[Table, dict[str, Table]]:
-    """Numerical errors of all rates, and what each coarser repeat contributes; pairs of a table and a coarser one."""
-    by_cause = {
-        cause: {s: {k: LEFT_OF[cause] * abs(a[s][k] - b[s][k]) for k in fine[s]} for s in fine}
-        for cause, (a, b) in coarser.items()
-    }
+
+def _errors(fine: Table, changes: Mapping[str, list[Change]]) -> tuple[Table, dict[str, Table]]:
+    """Numerical errors of all rates, and what each cause contributes."""
+    by_cause: dict[str, Table] = {}
+    for cause, pairs in changes.items():
+        by_cause[cause] = {
+            s: {
+                k: float(np.sqrt(sum((w * (a.rates[s][k] - b.rates[s][k])) ** 2 for a, b, w in pairs))) for k in fine[s]
+            }
+            for s in fine
+        }
     # arriving light makes no mean spin torque on any shape (Nesvorny & Vokrouhlicky 2008): what there is of it is error
     residual = abs(fine["direct"]["domega_dt_rad_per_d2"])
     for s in ("direct", "total"):
@@ -380,28 +397,40 @@ def _drift(body: Body, shape: Shape | None, horizons: Horizons | None, meter: Me
     clock.lap("light")
     heat = _heat(world, horizons, heat_places, meter, steps=steps, keep=True)
     clock.lap("heat")
-    fine, coefficients = _rates(world, light.seen, heat.seen)
 
-    # What half the rotation nodes change, what half the places change (at half the nodes: it costs less and says the
-    # same), and what a quarter of the sample points change. Step by step there are no places of the heat to halve.
+    # What half the rotation nodes change, in the heat and in the light, what half the places change (at half the nodes:
+    # it costs less and says the same), and what a quarter of the sample points change. Step by step there are no
+    # places of the heat to halve.
     thin = horizons.thinned() if solver.shadows else no_shadows(shape, nodes // 2)
     heat_thin = _heat(world, thin, heat_places, meter, steps=fewer_steps)
     heat_sparse = _heat(world, thin, heat_places // 2, meter) if two_clocks else heat_thin
-    fewer, a_fewer = _rates(world, light.coarser["rotation_nodes"], heat_thin.seen)
-    base, a_base = _rates(world, light.seen, heat_thin.seen)
-    sparser, a_sparser = _rates(world, light.coarser["orbit_places"], heat_sparse.seen)
-    coarser = {"rotation_nodes": (fine, fewer), "orbit_places": (base, sparser)}
-    spread = [a_fewer - coefficients, a_sparser - a_base]
+    first = _rates(world, light.seen, heat.seen)
+    slower = _rates(world, light.seen, heat_thin.seen)
+    fewer = _rates(world, light.coarser["rotation_nodes"], heat_thin.seen)
+    sparser = _rates(world, light.coarser["orbit_places"], heat_sparse.seen)
+    changes = {
+        "rotation_nodes": [(first, slower, OVER_SHOT), (slower, fewer, LEFT_OF["rotation_nodes"])],
+        "orbit_places": [(slower, sparser, LEFT_OF["orbit_places"])],
+    }
     if len(horizons.shifts) > 1 and horizons.overshadowed.any():
-        shadier, a_shadier = _rates(world, light.coarser["lit_samples"], heat.seen)
-        coarser["lit_samples"] = (fine, shadier)
-        spread.append(a_shadier - coefficients)
-    errors, by_cause = _errors(fine, coarser)
+        shadier = _rates(world, light.coarser["lit_samples"], heat.seen)
+        changes["lit_samples"] = [(first, shadier, LEFT_OF["lit_samples"])]
+    # the heat is of second order in the time step: two solutions tell where the third, with no step at all, would be
+    fine = {s: {k: v + OVER_SHOT * (v - slower.rates[s][k]) for k, v in first.rates[s].items()} for s in first.rates}
+    coefficients = first.coefficients + OVER_SHOT * (first.coefficients - slower.coefficients)
+    errors, by_cause = _errors(fine, changes)
+    left = np.sqrt(
+        sum(
+            (left_of * (one.coefficients - other.coefficients)) ** 2
+            for pairs in changes.values()
+            for one, other, left_of in pairs
+        )
+    )
     clock.lap("coarser repeats")
 
     halved: dict[str, float] = {}
     if solver.halved_shape:
-        halved = _halved(world, nodes // 2, heat_places, light_places, fewer["total"], meter, fewer_steps)
+        halved = _halved(world, nodes // 2, heat_places, light_places, fewer.rates["total"], meter, fewer_steps)
         clock.lap("halved shape")
 
     scale = _spin_scale(world)
@@ -416,7 +445,6 @@ def _drift(body: Body, shape: Shape | None, horizons: Horizons | None, meter: Me
         halved_shape=halved,
     )
     a1, a2, a3 = (float(x) for x in coefficients)
-    left = 0.5 * np.sqrt(np.sum(np.square(spread), axis=0))
     acceleration = Acceleration(
         a1_au_per_d2=a1,
         a2_au_per_d2=a2,
@@ -453,7 +481,7 @@ def _drift(body: Body, shape: Shape | None, horizons: Horizons | None, meter: Me
         },
         sphere=line,
         notes=tuple(_advice(world, fine["total"], by_cause, errors["total"], halved)),
-        arrays=_arrays(world, horizons, light, heat, fine, errors),
+        arrays=_arrays(world, horizons, light, heat, heat_thin, fine, errors),
     )
 
 
@@ -524,8 +552,8 @@ def _halved(
     solver = world.body.solver
     horizons = horizons_of(half, nodes, solver.lit_samples, meter=meter) if solver.shadows else no_shadows(half, nodes)
     heat = _heat(other, horizons, heat_places, meter, steps=steps)
-    rates, _ = _rates(other, _light(other, horizons, light_places, meter).seen, heat.seen)
-    return {k: abs(rates["total"][k] - full[k]) for k in full}
+    half_rates = _rates(other, _light(other, horizons, light_places, meter).seen, heat.seen)
+    return {k: abs(half_rates.rates["total"][k] - full[k]) for k in full}
 
 
 def _source_rates(world: _World, values: Mapping[str, float], errors: Mapping[str, float]) -> SourceRates:
@@ -582,7 +610,7 @@ def _advice(
 
 
 def _arrays(
-    world: _World, horizons: Horizons, light: _Light, heat: _Heat, fine: Table, errors: Table
+    world: _World, horizons: Horizons, light: _Light, heat: _Heat, thin: _Heat, fine: Table, errors: Table
 ) -> dict[str, Quantity]:
     shape = world.shape
     places = light.seen["direct"].places
@@ -595,7 +623,7 @@ def _arrays(
         part = slice(start, start + 16)
         absorbed[:, part] = np.maximum(0.0, shape.normals @ u[part].T) * horizons.sees(u[part]) * strength[part]
     # the delay of the heat is solved at fewer places: its push is carried to the light's places by a periodic spline
-    late = _between(heat.drawn, places)
+    late = _between(heat.drawn, thin.drawn, places)
     force = {
         "thermal": light.seen["absorbed"].force + late[0],
         "scattered": light.seen["scattered"].force,
@@ -663,13 +691,15 @@ def _arrays(
     }  # fmt: skip
 
 
-def _between(lag: _Seen, places: Places) -> tuple[np.ndarray, np.ndarray]:
+def _between(lag: _Seen, coarser: _Seen, places: Places) -> tuple[np.ndarray, np.ndarray]:
+    """Force and torque of the heat's delay, without its error of second order, at other places."""
     from scipy.interpolate import CubicSpline
 
     m = np.append(lag.places.mean_anomaly, lag.places.mean_anomaly[0] + 2 * np.pi)
 
-    def carry(x: np.ndarray) -> np.ndarray:
+    def carry(x: np.ndarray, thin: np.ndarray) -> np.ndarray:
+        x = x + OVER_SHOT * (x - thin)
         spline = CubicSpline(m, np.concatenate([x, x[:1]]), bc_type="periodic")
         return np.asarray(spline(m[0] + np.mod(places.mean_anomaly - m[0], 2 * np.pi)))
 
-    return carry(lag.force), carry(lag.torque)
+    return carry(lag.force, coarser.force), carry(lag.torque, coarser.torque)
