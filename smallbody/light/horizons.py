@@ -230,7 +230,7 @@ def _cache_file(key: str) -> Path | None:
 
 def _from_cache(file: Path, columns: int, shifts: np.ndarray, samples: np.ndarray) -> Horizons | None:
     try:
-        with np.load(file, allow_pickle=False) as z:
+        with open(file, "rb") as opened, np.load(opened, allow_pickle=False) as z:
             rows, counts, low, high = z["rows"], z["counts"], z["low"], z["high"]
         whole = (
             (rows.dtype, counts.dtype, low.dtype, high.dtype) == (np.int32, np.uint8, np.float32, np.float32)
@@ -239,7 +239,7 @@ def _from_cache(file: Path, columns: int, shifts: np.ndarray, samples: np.ndarra
             and counts.shape == (np.count_nonzero(rows >= 0) * len(shifts) * columns,)
             and low.shape == high.shape == (int(counts.sum(dtype=np.int64)),)
         )
-    except FileNotFoundError:
+    except (FileNotFoundError, NotADirectoryError, PermissionError):  # if it cannot be written either, that is said
         return None
     except Exception:  # whatever a damaged file makes of the reader: the table is made anew
         whole = False
