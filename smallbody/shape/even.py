@@ -17,7 +17,8 @@ ROUNDS = 80  # of moving vertices on each grid but the last
 LAST_ROUNDS = 32  # on the last, between swaps of edges
 SLIVER = 0.45  # quality below which no facet is pressed to reach a crease
 CREASE_ROUNDS = 10  # of putting vertices on creases and swapping edges along them
-REACH = 0.5  # vertices nearer to a crease than this part of their distance from each other are put on it
+REACH = 0.45  # vertices nearer to a crease than this part of their distance from each other are put on it
+ON = 1e-12  # radians: nearer to a crease is on it
 STEP = 0.8  # of the way to the middle of the facets around
 
 
@@ -125,13 +126,14 @@ def _finish(
         for _ in range(CREASE_ROUNDS):
             number, there = creases(u)
             gap = np.sqrt(((there - u) ** 2).sum(axis=1))
-            on = np.where((gap < REACH * _spacing(radius, u, f)) & (number > 0), number, 0)
+            near = (gap < REACH * _spacing(radius, u, f)) | _nearer_ends_of_crossing_edges(u, number, there, gap, f)
+            on = np.where(near, number, 0)
             u = _pulled(radius, u, np.where(on[:, None] > 0, there, u), f)
-            on = np.where(np.sqrt(((there - u) ** 2).sum(axis=1)) < 1e-12, on, 0)
+            on = np.where(np.sqrt(((there - u) ** 2).sum(axis=1)) < ON, on, 0)
             swap(False)
             moved = _spread(radius, u, f, 2, density)
             u = _pulled(radius, moved, np.where(on[:, None] > 0, u, moved), f)
-        on = np.where(np.sqrt(((creases(u)[1] - u) ** 2).sum(axis=1)) < 1e-12, on, 0)
+        on = np.where(np.sqrt(((creases(u)[1] - u) ** 2).sum(axis=1)) < ON, on, 0)
     swap(False)
     return u * radius(u)[:, None], f
 
@@ -158,6 +160,20 @@ def _quality(p: np.ndarray, f: np.ndarray) -> np.ndarray:
     a, b, c = (p[f[:, k]] for k in range(3))
     sides = ((b - a) ** 2 + (c - b) ** 2 + (a - c) ** 2).sum(axis=1)
     return np.asarray(2.0 * np.sqrt(3.0) * np.sqrt((np.cross(b - a, c - a) ** 2).sum(axis=1)) / sides)
+
+
+def _nearer_ends_of_crossing_edges(
+    u: np.ndarray, number: np.ndarray, there: np.ndarray, gap: np.ndarray, f: np.ndarray
+) -> np.ndarray:
+    """(v,) whether a vertex is the end nearer to a crease of an edge that runs across it."""
+    start, end = f.T.ravel(), f[:, [1, 2, 0]].T.ravel()
+    away = u - there
+    crossing = (number[start] > 0) & (number[start] == number[end]) & (gap[start] > ON) & (gap[end] > ON)
+    crossing &= np.einsum("ij,ij->i", away[start], away[end]) < 0.0
+    start, end = start[crossing], end[crossing]
+    out = np.zeros(len(u), dtype=bool)
+    out[np.where(gap[start] <= gap[end], start, end)] = True
+    return out
 
 
 def _spacing(radius: Radius, u: np.ndarray, f: np.ndarray) -> np.ndarray:

@@ -256,7 +256,7 @@ def test_a_windmills_steep_faces_look_west_and_its_gentle_slopes_lean_to_the_pol
     assert np.median(upright[middle & steep]) > np.median(upright[middle & ~steep]) + 0.05
 
 
-@pytest.mark.parametrize(("facets", "blades"), [(320, 4), (1280, 3), (1280, 4), (5120, 4)])
+@pytest.mark.parametrize(("facets", "blades"), [(1280, 3), (1280, 4), (5120, 4)])
 def test_a_windmills_facets_do_not_lie_across_its_edges(facets, blades):
     shape = make_shape("windmill", facets, blades=blades, steep=0.15)
     longitude = np.arctan2(shape.vertices_m[:, 1], shape.vertices_m[:, 0])
@@ -271,7 +271,7 @@ def test_a_windmills_facets_do_not_lie_across_its_edges(facets, blades):
         across += int((here & (away.min(axis=1) < -aside) & (away.max(axis=1) > aside)).sum())
         along += int((here & (np.abs(away) < aside).any(axis=1)).sum())
     assert along > 200
-    assert across < 0.03 * along
+    assert across < 0.01 * along
 
 
 @pytest.mark.parametrize("seed", range(3))
