@@ -13,14 +13,14 @@ from __future__ import annotations
 
 import math
 
-import numpy as np
 from numba import njit
 
-from smallbody.heat._lanes import FAST, LANES, any_above, larger, largest, load, root, size, smaller, spread, store
+from smallbody.heat._lanes import FAST, any_above, larger, largest, load, root, size, smaller, spread, store
 
-FAR_K = 20.0  # a sweep that moved a node by more than this is followed by one that trusts no guess
-FIRST_STEPS = 12  # most Newton rounds for the daily means of a ground at one temperature all day
-MEAN_STEPS = 6  # the same for the daily means after each round of sweeps
+FAR = 0.05  # a sweep that moved a node by more of the daily mean is followed by one that trusts no guess
+FIRST_STEPS = 30  # most Newton rounds for the daily means of a ground at one temperature all day
+MEAN_STEPS = 20  # the same for the daily means after each round of sweeps
+HOLD = 1.0 / 0.7  # holds back passes over the places: without it they diverge where the orbit conducts much
 TINY = 1e-300  # keeps 0/0 out where ground without inertia meets darkness
 
 # A block's moments at a place, (5, L): means over the nodes of T, T^2, T^3, T^4, and the largest step of the last sweep
@@ -119,60 +119,59 @@ def _emitted(moments, d, es):
 
 
 @njit(cache=True, nogil=True, fastmath=FAST)
-def _balance(season, gamma, es, absorbed_mean, moments, shift, matrix, step, most, tol):
+def _balance(season, pull, gamma, es, absorbed_mean, moments, shift, most, tol):
     """Steps of the daily means, shift (p, L) out, that balance the energy of all places together:
-    es <(T + d)^4>[p] + gamma sum_q b[p,q] (<T> + d)[q] = absorbed_mean[p], by Newton's method.
+    es <(T + d)^4>[p] + gamma sum_q b[p,q] (<T> + d)[q] = absorbed_mean[p], by Newton steps from place to place, and
+    after each such pass one step of all places together, to which the conduction does not object (rows of b add up to
+    nothing).
 
-    matrix (p, p, L), step (p, L): room to work in. Elimination needs no pivoting: conduction takes heat out of any
-    variation of temperature and emission out of what is left, so that all pivots are positive.
+    pull (p,): column sums of season
     """
     places = moments.shape[0]
     zero = spread(0.0)
     for p in range(places):
         store(shift, p, zero)
     for _ in range(most):
-        for p in range(places):
-            flux, slope = _emitted(moments[p], load(shift, p), es)
-            rest = load(absorbed_mean, p) - flux - _conducted(season, gamma, p, moments, shift)
-            store(step, p, rest)
-            for q in range(places):
-                store(matrix[p], q, spread(gamma * season[p, q]))
-            store(matrix[p], p, load(matrix[p], p) + (slope + TINY))
-        for k in range(places):
-            inverse = 1.0 / load(matrix[k], k)
-            for p in range(k + 1, places):
-                ratio = load(matrix[p], k) * inverse
-                for q in range(k + 1, places):
-                    store(matrix[p], q, load(matrix[p], q) - ratio * load(matrix[k], q))
-                store(step, p, load(step, p) - ratio * load(step, k))
         moved = zero
-        for k in range(places - 1, -1, -1):
-            s = load(step, k)
-            for q in range(k + 1, places):
-                s = s - load(matrix[k], q) * load(step, q)
-            s = s / load(matrix[k], k)
-            store(step, k, s)
-            d = load(shift, k)
-            new = larger(d + s, -0.9 * load(moments[k], _M1))  # below, the quartic in d turns up again
+        for p in range(places):
+            d = load(shift, p)
+            flux, slope = _emitted(moments[p], d, es)
+            m1 = load(moments[p], _M1)
+            rest = flux + _conducted(season, gamma, p, moments, shift) - load(absorbed_mean, p)
+            own = gamma * season[p, p] * HOLD
+            new = larger(d - rest / (slope + (own + TINY)), -0.9 * m1)
+            if any_above(new - d - 0.5 * m1, 0.0):
+                # a Newton step from the cold is thrown far above the root, but the root is not above this
+                goal = larger(flux - rest + own * (m1 + d), zero)
+                new = smaller(new, larger(root(root(goal / es)) - m1, -0.9 * m1))
             moved = larger(size(new - d), moved)
-            store(shift, k, new)
+            store(shift, p, new)
+        rest, slope = zero, spread(TINY)
+        for p in range(places):
+            d = load(shift, p)
+            flux, steep = _emitted(moments[p], d, es)
+            rest = rest + (flux - load(absorbed_mean, p)) + (gamma * pull[p]) * (load(moments[p], _M1) + d)
+            slope = slope + steep
+        step = rest / slope
+        moved = larger(size(step), moved)
+        for p in range(places):  # below -0.9 of the mean the quartic in d turns up again
+            store(shift, p, larger(load(shift, p) - step, -0.9 * load(moments[p], _M1)))
         if not any_above(moved, tol):
             break
 
 
 @njit(cache=True, nogil=True, fastmath=FAST)
-def _solve(absorbed, weights, season, es, gamma, tol, most_rounds, t, absorbed_mean, moments, shift, out):
+def _solve(absorbed, weights, season, pull, es, gamma, tol, most_rounds, t, absorbed_mean, moments, shift, out):
     """Temperatures of LANES facets at all places and nodes; out[0]: rounds, out[1]: sweeps, out[2]: the last round's
-    largest step of any node, K (what is left is about a ninth of it).
+    largest step of any node, as a share of its facet's hottest daily mean (what is left is about a ninth of it).
 
-    absorbed (p, n, L) W/m2; weights (p, 2 n); season (p, p) for unit inertia; gamma: thermal inertia;
-    t (p, n, L), moments (p, 5, L): result.
+    absorbed (p, n, L) W/m2; weights (p, 2 n), with gamma b[p,p]/n added to each; season (p, p) for unit inertia, pull
+    (p,) its column sums; gamma: thermal inertia; t (p, n, L), moments (p, 5, L): result.
 
     A round sweeps once through the nodes of every place, under the sink of the latest daily means, and then moves all
     daily means together so that energy balances, since what the orbit conducts is shared among all places.
     """
     places, nodes, _ = absorbed.shape
-    matrix, step = np.empty((places, places, LANES)), np.empty((places, LANES))
     zero = spread(0.0)
     year = zero
     for p in range(places):
@@ -189,7 +188,7 @@ def _solve(absorbed, weights, season, es, gamma, tol, most_rounds, t, absorbed_m
         store(moments[p], _M3, guess * guess * guess)
         store(moments[p], _M4, (guess * guess) * (guess * guess))
         store(moments[p], _MOVED, spread(1e9))
-    _balance(season, gamma, es, absorbed_mean, moments, shift, matrix, step, FIRST_STEPS, 0.1)
+    _balance(season, pull, gamma, es, absorbed_mean, moments, shift, FIRST_STEPS, 0.1)
     for p in range(places):
         store(moments[p], _M1, guess + load(shift, p))
         store(shift, p, zero)
@@ -199,24 +198,25 @@ def _solve(absorbed, weights, season, es, gamma, tol, most_rounds, t, absorbed_m
             if rounds == 0:
                 for j in range(nodes):
                     store(t[p], j, load(t[p - 1], j) if p > 0 else load(moments[0], _M1))
-            sink = _conducted(season, gamma, p, moments, shift)
+            sink = _conducted(season, gamma, p, moments, shift) - (gamma * season[p, p]) * load(moments[p], _M1)
             for _ in range(3 if rounds == 0 and p == 0 else 1):
-                _sweep(any_above(load(moments[p], _MOVED), FAR_K), t[p], absorbed[p], weights[p], es, sink, moments[p])
+                far = any_above(load(moments[p], _MOVED) - FAR * load(moments[p], _M1), 0.0)
+                _sweep(far, t[p], absorbed[p], weights[p], es, sink, moments[p])
                 sweeps += 1
-        _balance(season, gamma, es, absorbed_mean, moments, shift, matrix, step, MEAN_STEPS, 0.1 * tol)
-        moved = zero
+        _balance(season, pull, gamma, es, absorbed_mean, moments, shift, MEAN_STEPS, 10.0 * tol)
+        moved, hottest = zero, spread(TINY)
         for p in range(places):
             d = load(shift, p)
             moved = larger(load(moments[p], _MOVED), moved)
+            hottest = larger(load(moments[p], _M1), hottest)
             store(moments[p], _M1, load(moments[p], _M1) + d)
             store(shift, p, zero)
             for j in range(nodes):
                 store(t[p], j, larger(load(t[p], j) + d, zero))
         rounds += 1
-        if not any_above(moved, tol):
-            still = largest(moved)
+        still = largest(moved / hottest)
+        if still <= tol:
             break
-        still = largest(moved)
     out[0], out[1], out[2] = rounds, sweeps, still
 
 
