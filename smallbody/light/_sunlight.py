@@ -37,7 +37,7 @@ def _rank(ranked, cells, x):
 
 @njit(cache=True, nogil=True)
 def _light_sums(
-    start, end, normals, areas, middles, samples, rows, starts, low, high, shifts, columns,
+    start, end, normals, areas, middles, samples, rows, starts, low, high, cosine, sine,
     sin_lat, cos_lat, by_latitude, ranked, cells, weight, lambert, lever, across, lit_lever, mean_mu,
 ):  # fmt: skip
     """Add facets start..end to the sums over the surface at every place p, for three tables of the sky v: all meridians
@@ -54,7 +54,7 @@ def _light_sums(
     sin_lat.
     """
     p_count = sin_lat.shape[0]
-    s_count = shifts.shape[0]
+    s_count, columns = cosine.shape
     edge = np.zeros((p_count + 1, 4, 12))  # kind of meridian and sample; what begins at a rank
     run = np.empty((4, 12))
     part = np.empty(12)
@@ -80,8 +80,7 @@ def _light_sums(
                     if starts[at] == starts[at + 1]:
                         continue
                     kind = rare + (1 if c % 2 == 0 else 0)
-                    angle = 2.0 * math.pi * (c + shifts[s]) / columns
-                    cl, sl = math.cos(angle), math.sin(angle)
+                    cl, sl = cosine[s, c], sine[s, c]
                     nl = nx * cl + ny * sl
                     part[0], part[2], part[4] = 1.0, cl, sl
                     part[6], part[8], part[10] = cl * qx + sl * qy, cl * qy - sl * qx, qz
@@ -134,63 +133,64 @@ def _light_sums(
 
 @njit(cache=True, nogil=True)
 def _lit(
-    facets, normals, rows, starts, low, high, shifts, columns, sin_lat, cos_lat, by_latitude, ranked, cells,
+    facets, normals, rows, starts, low, high, cosine, sine, sin_lat, cos_lat, by_latitude, ranked, cells,
     scratch, out,
 ):  # fmt: skip
     """mu at every place and rotation node for the facets given, out (p, c, l): facet l = facets[l] last.
 
     Nodes are in the order of time: the Sun's body longitude falls by 2 pi/columns from one to the next. Where a facet
-    has a row in the table of the sky, mu is the mean over its samples, each at its own meridian. scratch (p, c).
+    has a row in the table of the sky, mu is the mean over its samples, each at its own meridian:
+    cosine, sine (s, c) of its longitude. scratch (c, p).
     """
     p_count = sin_lat.shape[0]
-    s_count = shifts.shape[0]
+    s_count, columns = cosine.shape
     half = math.pi / columns
     smooth, skew = 0.0, 0.0  # means of cos and sin over the samples' meridians about a node
     for s in range(s_count):
-        smooth += math.cos(2.0 * math.pi * shifts[s] / columns) / s_count
-        skew += math.sin(2.0 * math.pi * shifts[s] / columns) / s_count
+        smooth += cosine[s, 0] / s_count
+        skew += sine[s, 0] / s_count
+    node_cos, node_sin = np.empty(columns), np.empty(columns)
+    for c in range(columns):
+        node_cos[c], node_sin[c] = math.cos(2.0 * math.pi * c / columns), math.sin(2.0 * math.pi * c / columns)
     for l in range(facets.shape[0]):
         f = facets[l]
         nx, ny, nz = normals[f, 0], normals[f, 1], normals[f, 2]
         nh = math.sqrt(nx * nx + ny * ny)
         row = rows[f]
         for c in range(columns):
-            angle = 2.0 * math.pi * c / columns
-            cl, sl = math.cos(angle), math.sin(angle)
+            cl, sl = node_cos[c], node_sin[c]
             nl = nx * cl + ny * sl
             for p in range(p_count):
                 mu = nz * sin_lat[p] + nl * cos_lat[p]
                 if row < 0:
-                    scratch[p, c] = max(0.0, mu)
+                    scratch[c, p] = max(0.0, mu)
                     continue
                 slack = nh * cos_lat[p] * half
                 if mu > slack:  # the Sun is up at all of the samples' meridians
-                    scratch[p, c] = nz * sin_lat[p] + (smooth * nl + skew * (ny * cl - nx * sl)) * cos_lat[p]
+                    scratch[c, p] = nz * sin_lat[p] + (smooth * nl + skew * (ny * cl - nx * sl)) * cos_lat[p]
                 elif mu < -slack:
-                    scratch[p, c] = 0.0
+                    scratch[c, p] = 0.0
                 else:
                     total = 0.0
                     for s in range(s_count):
-                        turned = angle + 2.0 * math.pi * shifts[s] / columns
-                        lean = nx * math.cos(turned) + ny * math.sin(turned)
+                        lean = nx * cosine[s, c] + ny * sine[s, c]
                         total += max(0.0, nz * sin_lat[p] + lean * cos_lat[p])
-                    scratch[p, c] = total / s_count
+                    scratch[c, p] = total / s_count
         if row >= 0:
             for s in range(s_count):
                 for c in range(columns):
                     at = (row * s_count + s) * columns + c
                     if starts[at] == starts[at + 1]:
                         continue
-                    angle = 2.0 * math.pi * (c + shifts[s]) / columns
-                    nl = nx * math.cos(angle) + ny * math.sin(angle)
+                    nl = nx * cosine[s, c] + ny * sine[s, c]
                     for i in range(starts[at], starts[at + 1]):
                         last = _rank(ranked, cells, high[i])
                         for k in range(_rank(ranked, cells, low[i]), last):
                             p = by_latitude[k]
-                            scratch[p, c] -= max(0.0, nz * sin_lat[p] + nl * cos_lat[p]) / s_count
+                            scratch[c, p] -= max(0.0, nz * sin_lat[p] + nl * cos_lat[p]) / s_count
         for p in range(p_count):
             for c in range(columns):
-                out[p, (columns - c) % columns, l] = max(0.0, scratch[p, c])
+                out[p, (columns - c) % columns, l] = max(0.0, scratch[c, p])
 
 
 @njit(cache=True, nogil=True)

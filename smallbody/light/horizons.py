@@ -54,6 +54,12 @@ class Horizons:
         """(f,) bool: does anything rise over the facet's own plane, so that it may be shaded while turned sunward?"""
         return np.asarray(self.rows >= 0)
 
+    @cached_property
+    def meridians(self) -> tuple[np.ndarray, np.ndarray]:
+        """cos and sin of the longitude of every sample's meridians, (s, columns) each."""
+        longitude = 2 * np.pi * (np.arange(self.columns) + self.shifts[:, None]) / self.columns
+        return np.cos(longitude), np.sin(longitude)
+
     @property
     def overshadowed_fraction(self) -> float:
         """Share of the facets that are overshadowed, by number."""

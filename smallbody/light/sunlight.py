@@ -71,7 +71,8 @@ def light_sums(
     p, f = len(sun.sin_latitude), len(shape.facets)
     total = [np.zeros((3, p, 3)), np.zeros((3, p, 3)), np.zeros((3, p)), np.zeros((3, p, 3))]
     mean_cosine = np.empty(f)
-    ranks = _ranks(sun)
+    by_latitude, ranked, cells = _ranks(sun)
+    cosine, sine = horizons.meridians
     parts: dict[int, list[np.ndarray]] = {}
     lock = threading.Lock()
 
@@ -79,8 +80,9 @@ def light_sums(
         part = [np.zeros_like(t) for t in total]
         _light_sums(
             start, end, shape.normals, shape.areas_m2, shape.centroids_m, horizons.samples, horizons.rows,
-            horizons.starts, horizons.low, horizons.high, horizons.shifts, horizons.columns,
-            sun.sin_latitude, sun.cos_latitude, *ranks, weight, *part, mean_cosine,
+            horizons.starts, horizons.low, horizons.high, cosine, sine,
+            sun.sin_latitude, sun.cos_latitude, by_latitude, ranked, cells, weight,
+            part[0], part[1], part[2], part[3], mean_cosine,
         )  # fmt: skip
         with lock:
             parts[start] = part
@@ -89,7 +91,9 @@ def light_sums(
     for start in sorted(parts):  # always in the same order, so that sums are the same to the last bit
         for t, part in zip(total, parts[start]):
             t += part
-    return LightTable(*(LightSums(*(t[v] for t in total), mean_cosine) for v in range(3)))
+    lambert, lever, across, lit_lever = total
+    fine, meridians, samples = (LightSums(lambert[v], lever[v], across[v], lit_lever[v], mean_cosine) for v in range(3))
+    return LightTable(fine, meridians, samples)
 
 
 def lit_cosines(shape: Shape, horizons: Horizons, sun: SunOnBody, facets: np.ndarray) -> np.ndarray:
@@ -100,10 +104,12 @@ def lit_cosines(shape: Shape, horizons: Horizons, sun: SunOnBody, facets: np.nda
     from smallbody.light._sunlight import _lit
 
     p = len(sun.sin_latitude)
+    by_latitude, ranked, cells = _ranks(sun)
+    cosine, sine = horizons.meridians
     out = np.empty((p, horizons.columns, len(facets)))
     _lit(
-        facets, shape.normals, horizons.rows, horizons.starts, horizons.low, horizons.high, horizons.shifts,
-        horizons.columns, sun.sin_latitude, sun.cos_latitude, *_ranks(sun), np.empty((p, horizons.columns)), out,
+        facets, shape.normals, horizons.rows, horizons.starts, horizons.low, horizons.high, cosine, sine,
+        sun.sin_latitude, sun.cos_latitude, by_latitude, ranked, cells, np.empty((horizons.columns, p)), out,
     )  # fmt: skip
     return out
 
