@@ -67,6 +67,19 @@ def doughnut(around=18, across=10, tilt=0.5, bend=0.15):
     return Shape(points @ np.array([[1, 0, 0], [0, c, -n], [0, n, c]]).T, facets)
 
 
+def convex(count=300, axes=(900.0, 500.0, 300.0), seed=0):
+    """The convex hull of points on an ellipsoid: unlike facets, none of which sees another. Metres."""
+    from scipy.spatial import ConvexHull
+
+    points = np.random.default_rng(seed).standard_normal((count, 3))
+    points = points / np.linalg.norm(points, axis=1, keepdims=True) * axes
+    facets = ConvexHull(points).simplices
+    a, b, c = (points[facets[:, k]] for k in range(3))
+    inward = np.einsum("ij,ij->i", np.cross(b - a, c - a), a) < 0
+    facets[inward] = facets[inward][:, ::-1]
+    return Shape(points, facets)
+
+
 def turned_about_z(shape, angle):
     c, s = np.cos(angle), np.sin(angle)
     return shape.turned(np.array([[c, -s, 0], [s, c, 0], [0, 0, 1.0]]))

@@ -408,9 +408,17 @@ def test_ordinary_bodies_stay_far_from_the_most_intervals_that_are_kept():
 # Symmetry
 
 
-@pytest.mark.parametrize("kind", ["sphere", "ellipsoid"])
-def test_nothing_overshadows_a_convex_body(kind):
-    table = table_of(make_shape(kind, 1280), lit_samples=4)
+CONVEX = {
+    "sphere": lambda: make_shape("sphere", 1280),
+    "hull": lambda: naive.convex(400, seed=1),
+    "sharp hull": lambda: naive.convex(60, (900.0, 300.0, 20.0), seed=2),
+    "box": lambda: naive.box([-1, -2, -3], [4, 5, 6], cuts=3),
+}
+
+
+@pytest.mark.parametrize("body", CONVEX)
+def test_nothing_overshadows_a_convex_body(body):
+    table = table_of(CONVEX[body](), lit_samples=4)
     assert not table.overshadowed.any()
     assert table.overshadowed_fraction == 0.0
     assert len(table.low) == 0
