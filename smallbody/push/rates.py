@@ -229,8 +229,9 @@ def _heat_on_course(world: _World, horizons: Horizons, places: Places, meter: Me
     # which place a step is nearest to
     m = places.mean_anomaly
     middle = 0.5 * (m + np.append(m[1:], m[0] + 2 * np.pi))
-    # perihelion is passed quickly, and every place wants a step of its own
-    least = max(nodes * np.sqrt(1 + orbit.e) / (1 - orbit.e) ** 1.5, 2 * np.pi / np.diff(middle).min())
+    # perihelion is passed quickly, and every place wants a step of its own; a coarser repeat has half of all that
+    a_step_each = 2 * np.pi / np.diff(middle).min()
+    least = max(nodes * np.sqrt(1 + orbit.e) / (1 - orbit.e) ** 1.5, a_step_each if keep else a_step_each / 2)
     # so many orbits hold whole rotations to NEAR_ENOUGH (Dirichlet's theorem), if the steps are not too many
     orbits, rotations = whole_rotations(exact, int(min(np.sqrt(1 / (NEAR_ENOUGH * exact)) + 1, MOST_STEPS // least)))
     n = max((steps or nodes) * rotations, int(orbits * least) + 1)
@@ -259,6 +260,8 @@ def _heat_on_course(world: _World, horizons: Horizons, places: Places, meter: Me
         np.stack([np.bincount(bins, x[:, k], minlength=len(m)) for k in range(3)], axis=1) / np.maximum(per, 1)
         for x in (seen.force, seen.torque)
     )
+    without, nearest = per[:, 0] == 0, np.round(m / (2 * np.pi) * n / orbits).astype(int) % n
+    force[without], torque[without] = seen.force[nearest[without]], seen.torque[nearest[without]]
     kept = shown if shown is not None else np.empty(0, int)
     turns = way.turns[kept]
     u = _towards(way.sin_latitude[kept], turns)
