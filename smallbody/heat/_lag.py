@@ -18,6 +18,7 @@ from numba import njit
 from smallbody.heat._lanes import FAST, any_above, larger, largest, load, root, size, smaller, spread, store
 
 FAR = 0.05  # a sweep that moved a node by more of the daily mean is followed by one that trusts no guess
+BRISK = 20  # rounds that take whole steps
 FIRST_STEPS = 30  # most Newton rounds for the daily means of a ground at one temperature all day
 MEAN_STEPS = 20  # the same for the daily means after each round of sweeps
 HOLD = 1.0 / 0.7  # holds back passes over the places: without it they diverge where the orbit conducts much
@@ -42,11 +43,11 @@ def _solve_node(c, es, w0):
 
 
 @njit(cache=True, nogil=True, fastmath=FAST)
-def _sweep(fresh, t, absorbed, weights, es, sink, moments):
+def _sweep(fresh, pace, t, absorbed, weights, es, sink, moments):
     """One Gauss-Seidel pass through the nodes in the order of time; moments (5, L) out.
 
     weights (2 n,): w[n-1], ..., w[0] twice over, so that each node's sum runs over consecutive memory.
-    Plainly, for each node j: one Newton step (three if `fresh`) towards
+    Plainly, for each node j: `pace` of one Newton step (of three if `fresh`) towards
     es T[j]^4 + w[0] T[j] = absorbed[j] - sink - sum_{k>0} w[k] T[j-k].
     Four nodes share each load of T: their sums begin with what the nodes were, and each new value is made good in the
     sums of those after it.
@@ -82,7 +83,8 @@ def _sweep(fresh, t, absorbed, weights, es, sink, moments):
                 y = _solve_node(c, es, w0 + TINY)
             else:
                 y = _newton(x, c, es, w0 + TINY)
-            step = y - x
+            step = pace * (y - x)
+            y = x + step
             store(t, j + k, y)
             moved = larger(size(step), moved)
             a0 = a1 - w1 * step
@@ -194,6 +196,7 @@ def _solve(absorbed, weights, season, pull, es, gamma, tol, most_rounds, t, abso
         store(shift, p, zero)
     sweeps, rounds, still = 0, 0, math.inf
     while rounds < most_rounds:
+        pace = 1.0 if rounds < BRISK else 0.5  # what has not settled by then swings to and fro
         for p in range(places):
             if rounds == 0:
                 for j in range(nodes):
@@ -201,7 +204,7 @@ def _solve(absorbed, weights, season, pull, es, gamma, tol, most_rounds, t, abso
             sink = _conducted(season, gamma, p, moments, shift) - (gamma * season[p, p]) * load(moments[p], _M1)
             for _ in range(3 if rounds == 0 and p == 0 else 1):
                 far = any_above(load(moments[p], _MOVED) - FAR * load(moments[p], _M1), 0.0)
-                _sweep(far, t[p], absorbed[p], weights[p], es, sink, moments[p])
+                _sweep(far, pace, t[p], absorbed[p], weights[p], es, sink, moments[p])
                 sweeps += 1
         _balance(season, pull, gamma, es, absorbed_mean, moments, shift, MEAN_STEPS, 10.0 * tol)
         moved, hottest = zero, spread(TINY)

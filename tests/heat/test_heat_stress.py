@@ -1,4 +1,4 @@
-"""The lag solver settles whatever it is asked: random orbits, grounds and days, poles among the facets, dark stretches."""
+"""The lag solver settles whatever it is asked: random orbits, grounds and days, poles, dark stretches."""
 
 import numpy as np
 import pytest
