@@ -402,7 +402,7 @@ class Solver:
     shadows : whether facets shade one another
     lit_samples : points of a facet at which the Sun's visibility is asked; 1 is the centroid
     method : "lag", the periodic lag solver, or "march", the slow depth-marching reference
-    march_steps : time steps of a rotation, method "march" only
+    march_steps : time steps of a rotation, at least 48, method "march" only
     halved_shape : repeat with half the facets, to say whether a denser shape would matter
     """
 
@@ -412,7 +412,7 @@ class Solver:
     shadows: Flag = True
     lit_samples: Annotated[Literal[1, 4, 16], BeforeValidator(_whole)] = 16
     method: Literal["lag", "march"] = "lag"
-    march_steps: Annotated[Whole, Field(ge=16, le=8192)] = 96
+    march_steps: Annotated[Whole, Field(ge=48, le=8192)] = 96
     halved_shape: Flag = True
 
     @staticmethod

@@ -9,7 +9,7 @@ temperatures stay positive whatever the inertia. Over the orbit it acts on the d
 from __future__ import annotations
 
 from dataclasses import dataclass
-from functools import cached_property
+from functools import cached_property, lru_cache
 
 import numpy as np
 
@@ -45,27 +45,55 @@ def orbit_operator(places: Places) -> np.ndarray:
     in it even where places stand far apart in time), and its half-derivative in time is taken exactly, by Fourier
     series on a fine grid of equal times. Places equally spaced in time need no special case.
     """
-    from scipy.interpolate import CubicSpline
-
     count = len(places)
     if count < 3:
         return np.zeros((count, count))
-    m = places.mean_anomaly
+    half = _half_derivatives(places.mean_anomaly.tobytes()) * np.sqrt(places.mean_motion)
+    out = half - np.diag(half.sum(axis=1))  # a constant conducts nothing
+    return out - places.weight @ out  # and over a whole orbit nothing is conducted in the mean
+
+
+SUPPORT = 24  # places to either side over which the spline of one place has died away, to 1e-13 of itself
+
+
+@lru_cache(maxsize=16)
+def _half_derivatives(mean_anomaly: bytes) -> np.ndarray:
+    """Half-derivative at place p of the spline that is 1 at place q and 0 at the others, for unit mean motion."""
+    from scipy.fft import irfft, rfft
+    from scipy.interpolate import CubicSpline
+
+    m = np.frombuffer(mean_anomaly)
+    count = len(m)
     gap = np.diff(np.append(m, m[0] + 2 * np.pi)).min()
     fine = 1 << int(np.clip(np.ceil(np.log2(16 * 2 * np.pi / gap)), 10, 18))
     times = 2 * np.pi * np.arange(fine) / fine
     s = _running_number(m, times)
-    unit = np.sqrt(1j * np.arange(fine // 2 + 1) * places.mean_motion)
+    unit = np.sqrt(1j * np.arange(fine // 2 + 1))
+    card = np.zeros(count + 1)
+    card[[0, count]] = 1.0
+    spline = CubicSpline(np.arange(count + 1), card, bc_type="periodic")
+    # cubic interpolation of the result at the places
+    near = m / (2 * np.pi) * fine
+    first = np.floor(near).astype(int) - 1
+    d = near - first
+    points = (first[:, None] + np.arange(4)) % fine
+    weights = np.stack(
+        [
+            -(d - 1) * (d - 2) * (d - 3) / 6,
+            d * (d - 2) * (d - 3) / 2,
+            -d * (d - 1) * (d - 3) / 2,
+            d * (d - 1) * (d - 2) / 6,
+        ],
+        axis=1,
+    )
     out = np.empty((count, count))
     for q in range(count):
-        card = np.zeros(count + 1)
-        card[q] = 1.0
-        card[count] = card[0]
-        spline = CubicSpline(np.arange(count + 1), card, bc_type="periodic")
-        half = np.fft.irfft(unit * np.fft.rfft(spline(np.mod(s, count))), fine)
-        out[:, q] = CubicSpline(np.append(times, 2 * np.pi), np.append(half, half[0]), bc_type="periodic")(m)
-    out -= np.diag(out.sum(axis=1))  # a constant conducts nothing
-    return out - places.weight @ out  # and over a whole orbit nothing is conducted in the mean
+        away = np.mod(s - q + count / 2, count) - count / 2
+        bump = np.zeros(fine)
+        close = np.abs(away) < SUPPORT
+        bump[close] = spline(np.mod(away[close], count))
+        out[:, q] = (irfft(unit * rfft(bump), fine)[points] * weights).sum(axis=1)
+    return out
 
 
 def _running_number(mean_anomaly: np.ndarray, times: np.ndarray) -> np.ndarray:

@@ -50,7 +50,11 @@ class OrbitRates:
 
 @dataclass(frozen=True)
 class SpinRates:
-    """Mean rates of the spin; dazimuth_dt is the pole's precession. doubling_time is omega over |domega/dt|."""
+    """Mean rates of the spin; dazimuth_dt is the pole's precession. doubling_time is omega over |domega/dt|.
+
+    Where the pole stands on the orbit normal it has no azimuth: dazimuth_dt is NaN, and dobliquity_dt is the rate at
+    which the pole leaves the normal towards the azimuth given.
+    """
 
     domega_dt_rad_per_d2: Rate
     dobliquity_dt_deg_per_myr: Rate

@@ -309,7 +309,8 @@ def _windmill(numbers: dict[str, Any], rng: np.random.Generator) -> Radius:
 
     hand = +1: the steep faces look west, against the rotation (about +z). They see more of the Sun over a day than the
     gentle slopes, which lean to the poles; the recoil of their heat pushes them east: the body spins up (no obliquity).
-    hand = -1 is the mirror image and spins down.
+    hand = -1 is the mirror image and spins down. That holds for the numbers it has by default; six low blades were seen
+    to turn the other way, slowly, since they shade each other.
     """
     blades, height, steep, hand = int(numbers["blades"]), numbers["height"], numbers["steep"], numbers["hand"]
 
@@ -426,7 +427,7 @@ KINDS: dict[str, Kind] = {
             "blades": Number("how many", 4, 2, 8, whole=True),
             "height": Number("of a blade, in radii of the sphere", 0.3, 0.02, 0.5),
             "steep": Number("part of a blade's width that its steep side takes", 0.15, 0.1, 0.5),
-            "hand": Number("1 spins up, -1 down", 1, -1, 1, whole=True, barred=(0,)),
+            "hand": Number("1 spins up, -1 down (with few, high blades)", 1, -1, 1, whole=True, barred=(0,)),
         },
         creases=_blade_edges,
     ),

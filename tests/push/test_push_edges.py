@@ -47,7 +47,7 @@ CORNERS = {
     "0.31 rotations": ({"spin__period_h": hours_for(0.31)}, set()),
     "100,000 rotations": ({"spin__period_h": hours_for(1e5)}, set()),
     "march": (SLOW | {"solver__method": "march"}, set()),
-    "march, few steps": (SLOW | {"solver__method": "march", "solver__march_steps": 16}, set()),
+    "march, few steps": (SLOW | {"solver__method": "march", "solver__march_steps": 48}, set()),
     "march, albedo 1": (SLOW | {"solver__method": "march", "surface__bond_albedo": 1.0}, set()),
     "march, inertia 0": (SLOW | {"solver__method": "march", "surface__thermal_inertia": 0.0}, set()),
     "march, 0.3 rotations": ({"spin__period_h": hours_for(0.3), "solver__method": "march"}, set()),
