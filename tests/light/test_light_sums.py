@@ -1,5 +1,6 @@
 """What sunlight the facets receive: means against counting, twins, silhouettes, and what must vanish."""
 
+from dataclasses import replace
 from itertools import pairwise
 
 import naive_light as naive
@@ -11,7 +12,6 @@ from numpy.testing import assert_allclose
 from scipy.integrate import quad
 
 from smallbody.light import (
-    SunOnBody,
     horizons_of,
     light_sums,
     lit_cosines,
@@ -31,7 +31,8 @@ SUMS = ("lambert", "lever", "across", "lit_lever")
 def sun_at(sin_latitude):
     """The Sun over given latitudes; only these matter to the sums."""
     s = np.asarray(sin_latitude, float)
-    return SunOnBody(s, np.sqrt(1 - s * s), np.broadcast_to(np.eye(3), (len(s), 3, 3)), np.zeros(len(s)))
+    any_sun = sun_on_body(places_in_true_anomaly(1.5e11, 0.0, len(s)), 0.0, 0.0)
+    return replace(any_sun, sin_latitude=s, cos_latitude=np.sqrt(1 - s * s))
 
 
 def sums_of(shape, sin_latitude, columns=16, lit_samples=1, shadows=True):
