@@ -109,6 +109,19 @@ def _running_number(mean_anomaly: np.ndarray, times: np.ndarray) -> np.ndarray:
     return np.asarray(CubicSpline(m, dense)(times))
 
 
+def rate_of_change(places: Places) -> np.ndarray:
+    """Matrix of the time derivative at the places of the periodic cubic spline through them, (p, p), 1/s."""
+    from scipy.interpolate import CubicSpline
+
+    count = len(places)
+    q = np.arange(count + 1)
+    cards = np.eye(count)[:, np.mod(q, count)].T
+    slope = CubicSpline(q, cards, bc_type="periodic")(q[:-1], 1)
+    sway = np.append(places.mean_anomaly, places.mean_anomaly[0] + 2 * np.pi) - 2 * np.pi * q / count
+    pace = 2 * np.pi / count + CubicSpline(q, sway, bc_type="periodic")(q[:-1], 1)
+    return np.asarray(slope * places.mean_motion / pace[:, None])
+
+
 def steady_orbit_operator(places: Places) -> np.ndarray:
     """The same matrix with the daily mean taken as straight lines in time between the places: less exact, but an
     M-matrix, so that temperatures stay positive whatever the light.
@@ -154,12 +167,26 @@ class LagSolver:
     ground : Ground
     places : Places round the orbit
     nodes : time steps in a rotation
-    rates : (p,) rad/s, of the Sun over the ground at each place
+    rates : (p,) rad/s, of the ground under a direction in the sky that turns but slowly
+    ahead : (p,) rad, by how much the Sun stands east of that direction. Given, the days' change from place to place is
+        followed too, to first order in the orbit's rate over the rotation's; None leaves it out
     """
 
-    def __init__(self, ground: Ground, places: Places, nodes: int, rates: np.ndarray) -> None:
-        if len(rates) != len(places):
+    def __init__(
+        self, ground: Ground, places: Places, nodes: int, rates: np.ndarray, ahead: np.ndarray | None = None
+    ) -> None:
+        if len(rates) != len(places) or (ahead is not None and len(ahead) != len(places)):
             raise SizeMismatch(f"{len(rates)} rates for {len(places)} places")
+        self._change: tuple[np.ndarray, np.ndarray, np.ndarray] | None = None
+        if ahead is not None and ground.thermal_inertia > 0 and len(places) >= 3:
+            # conduction's symbol is sqrt(i k rate + d/dt), nearly sqrt(i k rate) + (d/dt) / (2 sqrt(i k rate))
+            k = np.arange(nodes // 2 + 1)
+            answer = np.zeros((len(places), len(k)), complex)
+            answer[:, 1:] = 0.5 * ground.thermal_inertia / np.sqrt(1j * k[1:] * np.asarray(rates)[:, None])
+            if nodes % 2 == 0:
+                answer[:, -1] = 0.0  # the fastest harmonic has no phase
+            turn = np.exp(-1j * k * np.asarray(ahead)[:, None])
+            self._change = answer * turn.conj(), rate_of_change(places), turn
         self.ground, self.places, self.nodes = ground, places, nodes
         w = np.array([rotation_weights(nodes, ground.thermal_inertia, r) for r in rates])
         self.weights = np.ascontiguousarray(np.concatenate([w[:, ::-1], w[:, ::-1]], axis=1))
@@ -178,6 +205,17 @@ class LagSolver:
         if facets > LANES:
             raise SizeMismatch(f"absorbed light of {facets} facets; a block has at most {LANES}")
         light = full_block(absorbed_w_m2)
+        t, means = self._settle(light)
+        if self._change is not None:
+            after, rate, before = self._change
+            days = np.fft.rfft(t, axis=1) * before[:, :, None]
+            days = np.einsum("pq,qkl->pkl", rate, days) * after[:, :, None]
+            t, means = self._settle(light - np.fft.irfft(days, n, axis=1))
+        return t[:, :, :facets], means[:, :facets]
+
+    def _settle(self, light: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
+        """Temperatures and daily means of a full block."""
+        p, n, _ = light.shape
         t, moments, rounds, worst = self._run(light, self.season)
         if not worst <= TOL:
             # near darkness a spline through the daily means may ask for temperatures below zero where light comes and
@@ -191,7 +229,7 @@ class LagSolver:
                 f"rotation nodes (now {n}) or orbit places (now {p})",
                 temperature_k=t, rounds=rounds, worst=worst,
             )  # fmt: skip
-        return t[:, :, :facets], moments[:, 0, :facets]
+        return t, moments[:, 0]
 
     def _run(self, light: np.ndarray, season: np.ndarray) -> tuple[np.ndarray, np.ndarray, int, float]:
         """Temperatures, moments, rounds, and the largest step of the last one as a share, for a full block."""

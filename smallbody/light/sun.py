@@ -153,12 +153,14 @@ class SunOnBody:
 
     sin_latitude, cos_latitude : of the subsolar point
     axes : (p, 3, 3) rows x, y, z of the frame in which the spin pole is z and the Sun has no y, in the orbit frame
-    ascension_rate : rate of the Sun's longitude in the frame that does not spin, rad/s
+    ascension : longitude of the Sun in a frame with that z that does not spin, rad
+    ascension_rate : its rate, rad/s
     """
 
     sin_latitude: np.ndarray
     cos_latitude: np.ndarray
     axes: np.ndarray
+    ascension: np.ndarray
     ascension_rate: np.ndarray
 
 
@@ -180,5 +182,6 @@ def sun_on_body(places: Places, obliquity: float, azimuth: float) -> SunOnBody:
         sin_latitude=sin_lat,
         cos_latitude=np.sqrt(np.maximum(0.0, 1 - sin_lat**2)),
         axes=np.stack([x, y, np.broadcast_to(z, x.shape)], axis=1),
+        ascension=np.arctan2(u @ np.cross(z, spare), u @ spare),
         ascension_rate=rate,
     )

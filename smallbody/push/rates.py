@@ -43,7 +43,8 @@ SLOW_ROTATIONS = 50.0  # fewer in an orbit: rotation and orbit are one long peri
 WELL_MIXED = 24  # rotations of a long period in which any part of the body meets any part of the orbit
 FEWEST_STEPS = 10  # in a rotation, of a coarser repeat of the marching reference
 MOST_STEPS = 200_000  # of a long period, where only whole rotations ask for more than one orbit
-MOST_ASCENSION = 0.25  # the Sun's motion in longitude is not taken to change the rotation rate by more than this
+QUICK_ROTATIONS = 2000.0  # fewer in an orbit: the days' change from place to place is followed as well
+UPRIGHT = 0.5  # |cos obliquity| beyond which the Sun's longitude moves evenly enough to be followed; else none is
 WORTH_SAYING = 0.02  # relative numerical error beyond which the output says what to raise
 SMALL_DRIFT = 1e-3  # of the natural scale: a drift smaller than this is judged against the scale
 SMALL_SPIN = 2e-4
@@ -206,9 +207,12 @@ def _heat(world: _World, horizons: Horizons, count: int, meter: Meter, *, steps:
     if steps or world.body.rotations_per_orbit < SLOW_ROTATIONS:
         return _heat_on_course(world, horizons, places, meter, steps, keep)
     sun = world.sun(places)
-    most = MOST_ASCENSION * world.omega
-    rates = world.omega - np.clip(sun.ascension_rate, -most, most)
-    solver = LagSolver(world.ground, places, horizons.columns, rates)
+    if abs(np.cos(world.body.obliquity)) >= UPRIGHT:
+        rates, ahead = world.omega - sun.ascension_rate, np.zeros(len(places))
+    else:
+        rates, ahead = np.full(len(places), world.omega), sun.ascension
+    quick = world.body.rotations_per_orbit >= QUICK_ROTATIONS
+    solver = LagSolver(world.ground, places, horizons.columns, rates, None if quick else ahead)
     albedo = world.body.surface.bond_albedo
     run = push_of_heat(world.shape, horizons, solver, sun, albedo, shown=0 if keep else None, meter=meter)
     seen = _resolve(run.push, places, world)

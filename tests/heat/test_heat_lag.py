@@ -10,8 +10,9 @@ from scipy.linalg import circulant
 from smallbody.constants import AU_M, SIGMA
 from smallbody.errors import NotSettled, SizeMismatch
 from smallbody.heat import Ground, LagSolver, orbit_operator, rotation_weights
+from smallbody.heat.lag import rate_of_change
 from smallbody.heat.march import march_period
-from smallbody.light import places_at, places_between, pole_vector, sun_on_body
+from smallbody.light import course, places_at, places_between, pole_vector, sun_on_body
 
 RATE = 2 * np.pi / (4.3 * 3600)
 EPS, ALBEDO = 0.9, 0.05
@@ -331,3 +332,47 @@ def test_light_that_is_not_a_number_does_not_pass_for_an_answer(bad):
     light[0, 5, 2] = bad
     with pytest.raises((NotSettled, ValueError)):
         LagSolver(Ground(EPS, 200.0), one_place(), 16, np.array([RATE])).solve(light)
+
+
+def test_a_spline_through_the_places_tells_how_fast_things_change():
+    places = places_between(AU_M, 0.3, 48)
+    found = rate_of_change(places) @ np.sin(2 * places.mean_anomaly + 0.3)
+    plain = 2 * places.mean_motion * np.cos(2 * places.mean_anomaly + 0.3)
+    np.testing.assert_allclose(found, plain, rtol=0, atol=5e-4 * places.mean_motion)
+
+
+@pytest.mark.parametrize(("tilt", "most", "gain"), [(np.pi / 2, 5e-3, 2.0), (0.9, 3e-3, 1.0)])
+def test_days_that_change_from_place_to_place_are_followed(tilt, most, gain):
+    # 60 rotations an orbit: the first harmonic of the heat against marching through the whole orbit
+    rotations, nodes, steps = 60, 128, 192
+    places = places_between(AU_M, 0.4, 48)
+    sun = sun_on_body(places, tilt, 0.7)
+    spin = rotations * places.mean_motion
+    up = np.sin(np.linspace(-1.2, 1.2, 16))
+    upright = abs(np.cos(tilt)) >= 0.5
+    rates = spin - sun.ascension_rate if upright else np.full(len(places), spin)
+    ahead = np.zeros(len(places)) if upright else sun.ascension
+    ground = Ground(EPS, 200.0)
+    hour = 2 * np.pi * np.arange(nodes)[None, :, None] / nodes
+    mu = sun.sin_latitude[:, None, None] * up + sun.cos_latitude[:, None, None] * np.sqrt(1 - up**2) * np.cos(hour)
+    light = places.flux_w_m2[:, None, None] * np.maximum(mu, 0.0)
+    way = course(AU_M, 0.4, tilt, 0.7, 1, rotations, rotations * steps)
+    high = np.sqrt(1 - way.sin_latitude**2)[:, None]
+    mu = way.sin_latitude[:, None] * up + high * np.sqrt(1 - up**2) * np.cos(2 * np.pi * way.turns)[:, None]
+    slow = way.places.flux_w_m2[:, None] * np.maximum(mu, 0.0)
+    t = march_period(ground, way.period_s, slow, fast_rate=way.rate)
+    # the push along a direction that stays in the sky, as the Sun comes and goes: what drifts an orbit
+    turned = np.exp(-2j * np.pi * rotations * np.arange(len(slow)) / len(slow)) * np.cos(way.places.true_anomaly)
+    true = ((EPS * SIGMA * t**4 - slow) * turned[:, None]).mean(axis=0)
+    # the course counts rotations from where its own axes stood at the start
+    offset = sun.ascension[0] - 2 * np.pi * way.turns[0]
+    wrong = []
+    for followed in (ahead, None):
+        solver = LagSolver(ground, places, nodes, rates, followed)
+        t, _ = solver.solve(light)
+        x = solver.excess(t, light)
+        pushed = np.exp(-1j * (sun.ascension - offset)) * np.cos(places.true_anomaly) * places.weight
+        wrong.append(np.abs(pushed @ (x[1] + 1j * x[2]) - true).max() / np.abs(true).max())
+    assert wrong[0] < most
+    assert wrong[1] > gain * wrong[0], wrong
+    assert wrong[0] < most

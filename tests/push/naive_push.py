@@ -139,11 +139,14 @@ def naive_chain(
             n, r = turned(u, nodes)
             places.append((n, r))
             absorbed[k] = (1 - bond_albedo) * flux * np.maximum(0, n @ u)
-            # how fast the Sun moves in longitude over the ground: rotation less its own way round the pole
+            # how fast the Sun moves in longitude over the ground: rotation less its own way round the pole, unless that
+            # pole lies so low that the Sun jumps across it
             step = 1e-5
             before, after = (azimuth(sun(m + s)[0]) for s in (-step, step))
             moved = (after - before + np.pi) % (2 * np.pi) - np.pi
-            rate = omega - moved / (2 * step) * np.sqrt(GM / elements[0] ** 3)
+            normal = np.cross(*state(elements, 0.0))
+            lies = abs(pole @ normal) < 0.5 * np.linalg.norm(normal)
+            rate = omega - (0.0 if lies else moved / (2 * step) * np.sqrt(GM / elements[0] ** 3))
             # convolution quadrature as a plain Fourier sum: the symbol 3/2 - 2 z + z^2/2, square root of it over dt
             q = np.arange(nodes)
             z = np.exp(-2j * np.pi * q / nodes)

@@ -39,7 +39,7 @@ def test_the_chain_agrees_with_a_naive_twin(monkeypatch, gamma, e, pole):
     lon, lat = np.radians(pole)
     asked = body(
         spin__pole_ecliptic_deg=pole, orbit__e=e, surface__thermal_inertia=gamma, solver__shadows=False,
-        solver__rotation_nodes=16, solver__orbit_places=8, solver__light_places=16, spin__period_h=40.0,
+        solver__rotation_nodes=16, solver__orbit_places=8, solver__light_places=16, spin__period_h=4.0,
     )  # fmt: skip
     result = drift(asked, shape=one)
     values, _ = rates_of(result)
