@@ -226,6 +226,17 @@ def test_the_suns_longitude_moves_at_the_rate_said(obliquity):
     assert_allclose(found, rate, rtol=0, atol=1e-8 * np.abs(rate).max())
 
 
+@pytest.mark.parametrize("obliquity", [0.0, 37.0, 90.0, 143.0, 180.0])
+def test_the_ascension_of_the_sun_is_the_turn_of_the_frame_that_follows_it(obliquity):
+    places = places_in_true_anomaly(A_M, 0.4, 25)  # an odd number: none with the Sun over the pole
+    tilt, turn = np.radians(obliquity), np.radians(33.0)
+    sun = sun_on_body(places, tilt, turn)
+    # turned back by the ascension, the frame's x axis is the same at all places
+    fixed = np.array([Rotation.from_rotvec(-a * z).apply(x) for a, (x, _, z) in zip(sun.ascension, sun.axes)])
+    assert_allclose(fixed, np.broadcast_to(fixed[0], fixed.shape), rtol=0, atol=1e-12)
+    assert_allclose(fixed @ pole_vector(tilt, turn), 0, rtol=0, atol=1e-12)
+
+
 def test_a_circular_orbit_without_obliquity_moves_the_sun_at_the_mean_motion():
     places = places_between(A_M, 0.0, 6)
     assert_allclose(sun_on_body(places, 0.0, 0.0).ascension_rate, places.mean_motion, rtol=1e-14)
