@@ -1,3 +1,4 @@
+# mypy: ignore-errors
 """Kernels: a bounding-volume tree over facets. Plain arrays in, nothing raised."""
 
 from __future__ import annotations
