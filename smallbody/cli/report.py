@@ -93,7 +93,10 @@ def _exponent(size: float) -> int:
 def _decimals(size: float, error: float, most: int) -> int:
     """Two digits of the error, but no more than `most` digits after the first of the value."""
     most = max(0, most - math.floor(math.log10(size)))
-    return most if error == 0.0 else max(0, min(most, 1 - math.floor(math.log10(abs(error)))))
+    if error == 0.0:
+        return most
+    rounded = float(f"{abs(error):.1e}")  # 9.96 is 10 to two digits, and has one digit more before the point
+    return max(0, min(most, 1 - math.floor(math.log10(rounded))))
 
 
 def share(part: float) -> str:

@@ -570,3 +570,10 @@ def test_a_sweep_and_its_figure_come_from_the_command_line(call, run_toml, tmp_p
     assert call("figure", out, "--out", picture.with_suffix(".svg"), "--set", "spin.obliquity_deg=90").exit_code == 0
     assert "<svg" in picture.with_suffix(".svg").read_text()
     one_line(call("figure", out, "temperature", "--out", picture), "no picture 'temperature' of a sweep")
+
+
+def test_an_error_that_rounds_up_to_a_power_of_ten_keeps_two_digits():
+    from smallbody.cli.report import number_in_brackets, number_with_error
+
+    assert number_in_brackets(0.136202, 9.96e-5, size=0.2) == "+0.13620(10)"
+    assert number_with_error(1.5, 0.0996) == "+1.50 ± 0.10"
