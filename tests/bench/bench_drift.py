@@ -44,7 +44,8 @@ def main() -> None:
         sun_on_body,
         whole_rotations,
     )
-    from smallbody.push.rates import _heat, _light, _rates, _world
+    from smallbody.push.rates import _rates
+    from smallbody.push.solve import heat_of, light_of, world_of
     from smallbody.shape import prepare_shape
     from smallbody.workers import SILENT
 
@@ -70,11 +71,11 @@ def main() -> None:
 
     shape = prepare_shape(work.shape)
     horizons = horizons_of(shape, 64, 16)
-    world = _world(work, shape)
+    world = world_of(work, shape)
 
     def once():
-        light = _light(world, horizons, 192, SILENT)
-        return _rates(world, light.seen, _heat(world, horizons, 24, SILENT, keep=True).seen)
+        light = light_of(world, horizons, 192, SILENT)
+        return _rates(world, light.seen, heat_of(world, horizons, 24, SILENT, keep=True).seen)
 
     _, bare, _ = core(once)
     print(f"facets {result.checks.facets}, overshadowed {result.checks.overshadowed_fraction:.2f}")

@@ -6,7 +6,7 @@ import pytest
 from smallbody.constants import AU_M, SIGMA
 from smallbody.heat import LANES, Ground, LagSolver
 from smallbody.light import places_between, sun_on_body
-from smallbody.push.rates import default_places
+from smallbody.push.solve import default_places
 
 
 def random_case(rng):

@@ -269,7 +269,7 @@ def test_two_clocks_and_one_long_period_meet_at_fifty_rotations(monkeypatch):
     one = lump()
     asked = body(spin__period_h=hours_for(52.0), solver__shadows=False)
     clocks = drift(asked, shape=one)
-    monkeypatch.setattr("smallbody.push.rates.SLOW_ROTATIONS", 60.0)
+    monkeypatch.setattr("smallbody.push.solve.SLOW_ROTATIONS", 60.0)
     period = drift(asked, shape=one)
     (a, _), (b, _) = rates_of(clocks), rates_of(period)
     natural = scales(clocks)
