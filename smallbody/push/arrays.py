@@ -41,6 +41,11 @@ def arrays_of(
         "scattered": light.seen["scattered"].torque,
         "direct": light.seen["direct"].torque,
     }
+    torque["direct"] = torque["direct"] * [
+        0.0,
+        1.0,
+        1.0,
+    ]  # as in the rates: over a rotation there is none along the pole
     names = list(fine["total"])
     sources = ("total", *SOURCES)
 

@@ -58,6 +58,7 @@ class _Rates:
 
     rates: Table
     coefficients: np.ndarray
+    residual: float  # spin rate of the arriving light, rad/d2, which is nothing but the error of its shadows
 
 
 def _rates(world: World, light: Light, lag: Seen) -> _Rates:
@@ -69,9 +70,13 @@ def _rates(world: World, light: Light, lag: Seen) -> _Rates:
         "scattered": parts["scattered"],
         "direct": parts["direct"],
     }
+    # light that arrives makes no mean spin torque on any shape (Nesvorny & Vokrouhlicky 2008, A&A 480, 1): what the
+    # sampling of shadows leaves of it is taken off, and counted as an error
+    residual = parts["direct"]["domega_dt_rad_per_d2"]
+    out["direct"] = parts["direct"] | {"domega_dt_rad_per_d2": 0.0}
     out["total"] = {k: sum(out[s][k] for s in SOURCES) for k in late}
     coefficients = sum((s.coefficients(world) for s in light.values()), lag.coefficients(world))
-    return _Rates(out, np.asarray(coefficients))
+    return _Rates(out, np.asarray(coefficients), residual)
 
 
 # How much of the change from a coarser repeat is taken for the error of the finer one. Shadow edges converge like
@@ -81,8 +86,8 @@ LEFT_OF = {"rotation_nodes": 0.7, "orbit_places": 0.7, "lit_samples": 0.7}
 Change = tuple[_Rates, _Rates, float]  # a solution, a coarser one, and how much of the change is taken for error
 
 
-def _errors(fine: Table, changes: Mapping[str, list[Change]]) -> tuple[Table, dict[str, Table]]:
-    """Numerical errors of all rates, and what each cause contributes."""
+def _errors(fine: Table, changes: Mapping[str, list[Change]], residual: float) -> tuple[Table, dict[str, Table]]:
+    """Numerical errors of all rates, and what each cause contributes; residual: the spin rate of arriving light."""
     by_cause: dict[str, Table] = {}
     for cause, pairs in changes.items():
         by_cause[cause] = {
@@ -91,12 +96,10 @@ def _errors(fine: Table, changes: Mapping[str, list[Change]]) -> tuple[Table, di
             }
             for s in fine
         }
-    # arriving light makes no mean spin torque on any shape (Nesvorny & Vokrouhlicky 2008): what there is of it is error
-    residual = abs(fine["direct"]["domega_dt_rad_per_d2"])
     for s in ("direct", "total"):
         by_cause.setdefault("lit_samples", {t: dict.fromkeys(fine[t], 0.0) for t in fine})
         known = by_cause["lit_samples"][s]
-        known["domega_dt_rad_per_d2"] = max(known["domega_dt_rad_per_d2"], residual)
+        known["domega_dt_rad_per_d2"] = max(known["domega_dt_rad_per_d2"], abs(residual))
     total = {s: {k: float(np.sqrt(sum(t[s][k] ** 2 for t in by_cause.values()))) for k in fine[s]} for s in fine}
     return total, by_cause
 
@@ -184,7 +187,7 @@ def _drift(body: Body, shape: Shape | None, horizons: Horizons | None, meter: Me
     # the heat is of second order in the time step: two solutions tell where the third, with no step at all, would be
     fine = {s: {k: v + OVER_SHOT * (v - slower.rates[s][k]) for k, v in first.rates[s].items()} for s in first.rates}
     coefficients = first.coefficients + OVER_SHOT * (first.coefficients - slower.coefficients)
-    errors, by_cause = _errors(fine, changes)
+    errors, by_cause = _errors(fine, changes, first.residual)
     left = np.sqrt(
         sum(
             (left_of * (one.coefficients - other.coefficients)) ** 2
@@ -205,7 +208,7 @@ def _drift(body: Body, shape: Shape | None, horizons: Horizons | None, meter: Me
         facets=len(shape.facets),
         overshadowed_fraction=horizons.overshadowed_fraction,
         rotations_per_orbit=body.rotations_per_orbit,
-        direct_spin_residual=fine["direct"]["domega_dt_rad_per_d2"] / scale,
+        direct_spin_residual=first.residual / scale,
         spin_scale_rad_per_d2=scale,
         sphere_da_dt_au_per_myr=(line := _sphere(world)).da_dt_au_per_myr,
         halved_shape=halved,

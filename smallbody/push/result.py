@@ -96,7 +96,8 @@ class Checks:
     facets : number of facets
     overshadowed_fraction : share of the facets with something over their own plane
     rotations_per_orbit : sidereal
-    direct_spin_residual : spin rate of the directly arriving light, zero in truth, over the natural scale of spin rates
+    direct_spin_residual : spin rate that the sampling of shadows leaves of directly arriving light, over the natural
+        scale of spin rates; zero in truth (Nesvorny & Vokrouhlicky 2008), so it is in no rate but in their errors
     spin_scale_rad_per_d2 : that scale: mean sunlight/c times (diameter/2)^3 over the moment of inertia
     halved_shape : by how much each rate moves with half the facets, absolute, in its own unit; empty if not asked
     """
