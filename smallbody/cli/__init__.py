@@ -1,4 +1,4 @@
-"""The command line: a command parses, calls, prints. Results on stdout, talk on stderr.
+"""The command line: a command parses, calls, prints. Results on stdout, messages on stderr.
 
 One module per command, imported when the command is run; what a command needs is imported when it works.
 """
@@ -13,7 +13,7 @@ from typing import Any
 import click
 
 from smallbody import __version__
-from smallbody.cli.talk import Interrupted, common, error_lines, listening, talk_of
+from smallbody.cli.messages import Interrupted, common, error_lines, listening, messages_of
 from smallbody.errors import SmallbodyError
 
 # name: one line for the list of commands (each equals the first line of the command's own help, which a test asks)
@@ -53,7 +53,7 @@ class OneLine(click.Group):
         return super().resolve_command(ctx, args)
 
     def invoke(self, ctx: click.Context) -> Any:
-        with listening(talk_of(ctx)):
+        with listening(messages_of(ctx)):
             try:
                 return super().invoke(ctx)
             except KeyboardInterrupt:
@@ -73,7 +73,7 @@ class OneLine(click.Group):
                 click.echo(f"smallbody: {what}{error.strerror or error}", err=True)
                 raise click.exceptions.Exit(2) from None
             except Exception as error:
-                if talk_of(ctx).loudness > 0:
+                if messages_of(ctx).loudness > 0:
                     import traceback
 
                     click.echo(traceback.format_exc(), err=True)

@@ -9,7 +9,7 @@ from pathlib import Path
 import click
 
 from smallbody.cli.inputs import writable
-from smallbody.cli.talk import common, talk_of
+from smallbody.cli.messages import common, messages_of
 
 
 @click.command(name="drift")
@@ -30,7 +30,7 @@ def command(ctx: click.Context, run: Path, as_json: bool, out: Path | None, chan
     """
     from smallbody.body import read_body
 
-    talk = talk_of(ctx)
+    messages = messages_of(ctx)
     body = read_body(run, changes)
     if out is not None:
         writable("--out", out)
@@ -38,16 +38,16 @@ def command(ctx: click.Context, run: Path, as_json: bool, out: Path | None, chan
     from smallbody.push import drift
 
     began = time.perf_counter()
-    result = drift(body, meter=talk.meter())
-    talk.say(f"computed in {time.perf_counter() - began:.1f} s", 1)
+    result = drift(body, meter=messages.meter())
+    messages.say(f"computed in {time.perf_counter() - began:.1f} s", 1)
     if as_json:
         click.echo(json.dumps(result.to_dict(), allow_nan=False, indent=1))
     else:
         from smallbody.cli.report import print_drift
 
-        print_drift(body, result, [note for note in result.notes if not talk.has_said(note)])
+        print_drift(body, result, [note for note in result.notes if not messages.has_said(note)])
     if out is not None:  # after the printing: a disk that is full by now does not cost the numbers
         from smallbody.store import save
 
         save(result, out)
-        talk.say(f"written: {out}")
+        messages.say(f"written: {out}")

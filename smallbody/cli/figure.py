@@ -7,7 +7,7 @@ from pathlib import Path
 import click
 
 from smallbody.cli.inputs import named_numbers, writable
-from smallbody.cli.talk import common, talk_of
+from smallbody.cli.messages import common, messages_of
 
 
 @click.command(name="figure")
@@ -41,5 +41,5 @@ def command(ctx: click.Context, file: Path, kind: str | None, out: Path, setting
     from smallbody.figures import draw
 
     draw(file, kind, out, **choices)
-    talk_of(ctx).say(f"written: {out}", 1)
+    messages_of(ctx).say(f"written: {out}", 1)
     click.echo(out)

@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING
 import click
 
 from smallbody.cli.inputs import named_numbers, writable
-from smallbody.cli.talk import common, talk_of
+from smallbody.cli.messages import common, messages_of
 
 if TYPE_CHECKING:
     from smallbody.shape import Shape
@@ -80,7 +80,7 @@ def look(ctx: click.Context, file: Path, mend: bool, out: Path | None, length_un
     if serious:
         raise ShapeError(f"{file}: {'; '.join(serious)}", lines=[f"{file}: {message}" for message in serious])
     for fault in faults:
-        talk_of(ctx).note(f"{file}: {fault.message}")
+        messages_of(ctx).note(f"{file}: {fault.message}")
     _print_look(ctx, str(file), shape)
     if out is not None:
         _write(ctx, shape, out, length_unit)
@@ -133,7 +133,7 @@ def _write(ctx: click.Context, shape: Shape, out: Path, length_unit: str) -> Non
     from smallbody.shape import write_shape
 
     write_shape(shape, out, length_unit)
-    talk_of(ctx).say(f"written: {out}")
+    messages_of(ctx).say(f"written: {out}")
 
 
 def _print_look(ctx: click.Context, name: str, shape: Shape) -> None:
@@ -142,6 +142,6 @@ def _print_look(ctx: click.Context, name: str, shape: Shape) -> None:
     from smallbody.light import horizons_of
     from smallbody.shape import describe
 
-    talk = talk_of(ctx)
-    sky = horizons_of(shape, columns=64, lit_samples=1, meter=talk.meter())
-    print_shape(name, describe(shape), sky.overshadowed_fraction, details=talk.loudness > 0)
+    messages = messages_of(ctx)
+    sky = horizons_of(shape, columns=64, lit_samples=1, meter=messages.meter())
+    print_shape(name, describe(shape), sky.overshadowed_fraction, details=messages.loudness > 0)

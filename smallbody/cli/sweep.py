@@ -8,7 +8,7 @@ from pathlib import Path
 import click
 
 from smallbody.cli.inputs import grid, writable
-from smallbody.cli.talk import Interrupted, common, talk_of
+from smallbody.cli.messages import Interrupted, common, messages_of
 from smallbody.errors import SmallbodyError
 
 
@@ -39,7 +39,7 @@ def command(
 
     from smallbody.body import read_body
 
-    talk = talk_of(ctx)
+    messages = messages_of(ctx)
     over = grid("--over", specifications)
     body = read_body(run, changes)
     first = {key: values[0] for key, values in over.items()}
@@ -51,13 +51,13 @@ def command(
     from smallbody.batch import sweep
 
     cells = prod(map(len, over.values()))
-    talk.say(f"{cells} cells", 1)
+    messages.say(f"{cells} cells", 1)
     try:
-        result = sweep(body, over, out=out, meter=talk.meter())
+        result = sweep(body, over, out=out, meter=messages.meter())
     except KeyboardInterrupt:
         raise Interrupted("interrupted; the same command goes on where it stopped") from None
     if len(result.failed) == cells:
         raise SmallbodyError(f"all {cells} cells failed: {result.failed[0][1]}")
     rates = result.arrays["da_dt_au_per_myr"].values
-    talk.say(f"{cells} cells, da/dt from {nanmin(rates):+.3g} to {nanmax(rates):+.3g} au/Myr")
+    messages.say(f"{cells} cells, da/dt from {nanmin(rates):+.3g} to {nanmax(rates):+.3g} au/Myr")
     click.echo(out)

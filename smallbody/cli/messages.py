@@ -23,7 +23,7 @@ class Interrupted(SmallbodyError):
     exit_code = 130  # 128 + SIGINT, as shells have it
 
 
-class Talk:
+class Messages:
     """How much to say on stderr, and what has been noted so far.
 
     loudness : below 0 errors only, 0 notes and progress, above 0 details too
@@ -90,13 +90,13 @@ class Bar:
             self._progress = None
 
 
-def talk_of(ctx: click.Context) -> Talk:
-    """The talk of this run, made at its first mention."""
-    return ctx.find_root().ensure_object(Talk)
+def messages_of(ctx: click.Context) -> Messages:
+    """What this run has to say, made at its first mention."""
+    return ctx.find_root().ensure_object(Messages)
 
 
 @contextmanager
-def listening(talk: Talk) -> Iterator[None]:
+def listening(messages: Messages) -> Iterator[None]:
     """Show warnings of category Note as notes, other warnings only to those who want details."""
 
     def show(
@@ -108,9 +108,9 @@ def listening(talk: Talk) -> Iterator[None]:
         line: str | None = None,
     ) -> None:
         if issubclass(category, Note):
-            talk.note(str(message))
+            messages.note(str(message))
         else:
-            talk.say(f"{category.__name__}: {message} ({filename}:{lineno})", 1)
+            messages.say(f"{category.__name__}: {message} ({filename}:{lineno})", 1)
 
     with warnings.catch_warnings():
         warnings.simplefilter("always", Note)
@@ -128,10 +128,10 @@ def common(function: _F) -> _F:
     """The options of every command: -v, -q, --threads."""
 
     def louder(ctx: click.Context, param: click.Parameter, value: int) -> None:
-        talk_of(ctx).loudness += value
+        messages_of(ctx).loudness += value
 
     def quieter(ctx: click.Context, param: click.Parameter, value: int) -> None:
-        talk_of(ctx).loudness -= value
+        messages_of(ctx).loudness -= value
 
     def threads(ctx: click.Context, param: click.Parameter, value: int | None) -> None:
         if value is not None:
