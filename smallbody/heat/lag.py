@@ -19,7 +19,7 @@ from smallbody.light import Places
 
 LANES = 16  # facets solved in lockstep, as in _lanes
 TOL = 1e-4  # rounds end when none moved a node by a larger share of the hottest day's mean; about a ninth of it is left
-ENOUGH = 1e-3  # the share that may be left after the last round
+ENOUGH = 1e-2  # the share that may be left where a night is asked for more heat than it has: `roughest` tells
 MOST_ROUNDS = 60
 
 
@@ -188,6 +188,7 @@ class LagSolver:
             turn = np.exp(-1j * k * np.asarray(ahead)[:, None])
             self._change = answer * turn.conj(), rate_of_change(places), turn
         self.ground, self.places, self.nodes = ground, places, nodes
+        self.roughest = 0.0  # largest share that any facet so far still moved by in the end
         w = np.array([rotation_weights(nodes, ground.thermal_inertia, r) for r in rates])
         self.weights = np.ascontiguousarray(np.concatenate([w[:, ::-1], w[:, ::-1]], axis=1))
         self.season = orbit_operator(places) if ground.thermal_inertia > 0 else np.zeros((len(places),) * 2)
@@ -229,6 +230,7 @@ class LagSolver:
                 f"rotation nodes (now {n}) or orbit places (now {p})",
                 temperature_k=t, rounds=rounds, worst=worst,
             )  # fmt: skip
+        self.roughest = max(self.roughest, worst)
         return t, moments[:, 0]
 
     def _run(self, light: np.ndarray, season: np.ndarray) -> tuple[np.ndarray, np.ndarray, int, float]:

@@ -37,6 +37,7 @@ WELL_MIXED = 24  # rotations of a long period in which any part of the body meet
 MOST_STEPS = 200_000  # of a long period, where only whole rotations ask for more than one orbit
 QUICK_ROTATIONS = 2000.0  # fewer in an orbit: the days' change from place to place is followed as well
 UPRIGHT = 0.5  # |cos obliquity| beyond which the Sun's longitude moves evenly enough to be followed; else none is
+ROUGH = 1e-3  # share of a facet's temperature: settled worse than this is worth a note
 MISSED = 0.01  # a period whose rotations are off by more than this is worth a note
 
 
@@ -212,6 +213,11 @@ def heat_of(
     solver = LagSolver(world.ground, places, horizons.columns, rates, None if quick else ahead)
     albedo = world.body.surface.bond_albedo
     run = push_of_heat(world.shape, horizons, solver, sun, albedo, shown=0 if keep else None, meter=meter)
+    if keep and solver.roughest > ROUGH:
+        warnings.warn(
+            f"the temperature of some facet is settled to {100 * solver.roughest:.1g} % only: its nights give up heat "
+            "faster than places so far apart can follow; more solver.orbit_places may help", Note, stacklevel=2,
+        )  # fmt: skip
     seen = _resolve(run.push, places, world)
     turns = -np.arange(horizons.columns) / horizons.columns
     flux = np.full(len(turns), places.flux_w_m2[0])
