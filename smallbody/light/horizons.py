@@ -20,7 +20,7 @@ from smallbody.shape import Shape, facet_samples
 from smallbody.workers import SILENT, Meter, share
 
 LAYOUT = 3  # of the cached table; part of its name, so that an older table is never mistaken for a newer one
-WORTH_KEEPING_S = 1.0  # a table that took less to build is not written to the cache
+WORTH_KEEPING_S = 0.25  # a table that took less to build is not written to the cache
 CACHE_BYTES = 2 << 30  # the cache is trimmed to this, oldest tables first
 SLACK = 1e-9  # in body diameters: coplanar neighbours stand this much over each other by round-off
 BLOCK = 64  # facets in a block of work
