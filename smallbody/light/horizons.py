@@ -57,8 +57,7 @@ class Horizons:
     @cached_property
     def meridians(self) -> tuple[np.ndarray, np.ndarray]:
         """cos and sin of the longitude of every sample's meridians, (s, columns) each."""
-        longitude = 2 * np.pi * (np.arange(self.columns) + self.shifts[:, None]) / self.columns
-        return np.cos(longitude), np.sin(longitude)
+        return _meridians(self.columns, self.shifts)
 
     @property
     def overshadowed_fraction(self) -> float:
@@ -119,6 +118,11 @@ class Horizons:
             d[:, 2].copy(), turns, self.rows, self.starts, self.low, self.high, self.shifts, self.columns, out
         )  # fmt: skip
         return out
+
+
+def _meridians(columns: int, shifts: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
+    longitude = 2 * np.pi * (np.arange(columns) + shifts[:, None]) / columns
+    return np.cos(longitude), np.sin(longitude)
 
 
 def _starts(counts: np.ndarray) -> np.ndarray:
@@ -189,8 +193,7 @@ def _tabulate(shape: Shape, columns: int, shifts: np.ndarray, samples: np.ndarra
         corners.min(1), corners.max(1), shape.centroids_m, order, node_low, node_high, node_start, node_end, node_skip
     )
     slack = SLACK * shape.diameter_m
-    angle = 2 * np.pi * (np.arange(columns) + shifts[:, None]) / columns
-    cosine, sine = np.cos(angle), np.sin(angle)
+    cosine, sine = _meridians(columns, shifts)
     done: dict[int, tuple[np.ndarray, np.ndarray, np.ndarray]] = {}
 
     def work(start: int, end: int) -> None:

@@ -3,10 +3,13 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from functools import cached_property
 
 import numpy as np
 
 from smallbody.constants import GM_SUN, SUN_W
+
+CELLS = 1024  # of the look-up that ranks a latitude among the places
 
 
 def eccentric_anomaly(mean_anomaly: np.ndarray | float, e: float) -> np.ndarray:
@@ -140,6 +143,11 @@ def places_between(a_m: float, e: float, count: int) -> Places:
     return places_at(a_m, e, m, dt / dt.sum())
 
 
+def mean_sunlight(a_m: float, e: float) -> float:
+    """Sunlight through a surface facing the Sun, mean in time over an orbit, W/m2 (the mean of r^-2, exactly)."""
+    return float(SUN_W / (4 * np.pi * a_m * a_m * np.sqrt(1 - e * e)))
+
+
 def pole_vector(obliquity: float, azimuth: float) -> np.ndarray:
     """Spin pole in the orbit frame, (3,); azimuth from perihelion in the sense of motion, rad."""
     return np.array(
@@ -162,6 +170,14 @@ class SunOnBody:
     axes: np.ndarray
     ascension: np.ndarray
     ascension_rate: np.ndarray
+
+    @cached_property
+    def ranks(self) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
+        """Places in ascending order of the Sun's latitude, (p,); their sin_latitude, (p,); and how many of these are
+        below -1 + 2 i/CELLS, (CELLS + 1,), which finds a latitude's rank among them without a search."""
+        order = np.argsort(self.sin_latitude, kind="stable")
+        ranked = self.sin_latitude[order]
+        return order, ranked, np.searchsorted(ranked, np.linspace(-1.0, 1.0, CELLS + 1))
 
 
 def sun_on_body(places: Places, obliquity: float, azimuth: float) -> SunOnBody:

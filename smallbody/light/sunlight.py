@@ -48,15 +48,6 @@ class LightTable:
     fewer_samples: LightSums  # every fourth one
 
 
-CELLS = 1024  # of the look-up that ranks a latitude among the places
-
-
-def _ranks(sun: SunOnBody) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
-    by_latitude = np.argsort(sun.sin_latitude, kind="stable")
-    ranked = sun.sin_latitude[by_latitude]
-    return by_latitude, ranked, np.searchsorted(ranked, np.linspace(-1.0, 1.0, CELLS + 1))
-
-
 def light_sums(
     shape: Shape, horizons: Horizons, sun: SunOnBody, weight: np.ndarray, *, meter: Meter = SILENT
 ) -> LightTable:
@@ -71,7 +62,7 @@ def light_sums(
     p, f = len(sun.sin_latitude), len(shape.facets)
     total = [np.zeros((3, p, 3)), np.zeros((3, p, 3)), np.zeros((3, p)), np.zeros((3, p, 3))]
     mean_cosine = np.empty(f)
-    by_latitude, ranked, cells = _ranks(sun)
+    by_latitude, ranked, cells = sun.ranks
     cosine, sine = horizons.meridians
     parts: dict[int, list[np.ndarray]] = {}
     lock = threading.Lock()
@@ -104,7 +95,7 @@ def lit_cosines(shape: Shape, horizons: Horizons, sun: SunOnBody, facets: np.nda
     from smallbody.light._sunlight import _lit
 
     p = len(sun.sin_latitude)
-    by_latitude, ranked, cells = _ranks(sun)
+    by_latitude, ranked, cells = sun.ranks
     cosine, sine = horizons.meridians
     out = np.empty((p, horizons.columns, len(facets)))
     _lit(

@@ -13,7 +13,7 @@ import numpy as np
 from smallbody.body import Body
 from smallbody.constants import AU_M, C_M_S, DAY_S, GM_SUN, MYR_S
 from smallbody.errors import BodyError, Note, ShapeError, SizeMismatch
-from smallbody.light import Horizons, horizons_of, no_shadows, places_in_true_anomaly
+from smallbody.light import Horizons, horizons_of, mean_sunlight, no_shadows
 from smallbody.push.arrays import OVER_SHOT, Table, arrays_of
 from smallbody.push.gauss import ORBIT_UNITS, SPIN_UNITS
 from smallbody.push.result import SOURCES, Acceleration, Checks, Drift, OrbitRates, Rate, SourceRates, SpinRates
@@ -35,7 +35,7 @@ from smallbody.workers import SILENT, Meter
 
 FEWEST_STEPS = 10  # in a rotation, of a coarser repeat of the marching reference
 WORTH_SAYING = 0.02  # relative numerical error beyond which the output says what to raise
-SMALL_DRIFT = 1e-3  # of the natural scale: a drift smaller than this is judged against the scale
+SMALL_DRIFT = 3e-3  # of the natural scale: a drift smaller than this is judged against the scale
 SMALL_SPIN = 2e-4
 
 
@@ -122,10 +122,6 @@ def drift(body: Body, *, shape: Shape | None = None, horizons: Horizons | None =
     for w in caught:
         warnings.warn_explicit(w.message, w.category, w.filename, w.lineno)
     said = tuple(str(w.message) for w in caught if issubclass(w.category, Note))
-    return _with_notes(result, said)
-
-
-def _with_notes(result: Drift, said: tuple[str, ...]) -> Drift:
     return replace(result, notes=said + result.notes)
 
 
@@ -281,9 +277,9 @@ def versions() -> dict[str, str]:
 def _spin_scale(world: World) -> float:
     """Natural scale of spin rates, rad/d2: mean sunlight/c times (diameter/2)^3 over the moment of inertia."""
     orbit = world.body.orbit
-    places = places_in_true_anomaly(orbit.a_au * AU_M, orbit.e, 8)
-    flux = float(places.weight @ places.flux_w_m2)
-    return flux / C_M_S * (world.shape.diameter_m / 2) ** 3 / world.moment * DAY_S**2
+    return (
+        mean_sunlight(orbit.a_au * AU_M, orbit.e) / C_M_S * (world.shape.diameter_m / 2) ** 3 / world.moment * DAY_S**2
+    )
 
 
 def _sphere(world: World) -> SphereDrift:
@@ -351,7 +347,7 @@ def _advice(
     """What to raise where a numerical error exceeds two per cent, and whether a denser shape would matter."""
     orbit = world.body.orbit
     spin_floor = SMALL_SPIN * _spin_scale(world)
-    pressure = 3 * _spin_scale(world) / DAY_S**2 * world.moment / ((world.shape.diameter_m / 2) ** 3)
+    pressure = mean_sunlight(orbit.a_au * AU_M, orbit.e) / C_M_S
     accel = pressure * np.pi * (world.shape.diameter_m / 2) ** 2 / world.mass_kg
     n = np.sqrt(GM_SUN / (orbit.a_au * AU_M) ** 3)
     to_deg = DAY_S**-2 / world.omega * np.degrees(1) * MYR_S

@@ -6,7 +6,8 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from smallbody.constants import AU_M, C_M_S, GM_SUN, MYR_S, SIGMA, SUN_W
+from smallbody.constants import AU_M, C_M_S, GM_SUN, MYR_S, SIGMA
+from smallbody.light import mean_sunlight
 
 
 @dataclass(frozen=True)
@@ -67,7 +68,7 @@ def sphere_drift(
     source : Vokrouhlicky 1998, 1999; review Bottke et al. 2006, Annu. Rev. Earth Planet. Sci. 34, 157
     """
     a = a_au * AU_M
-    flux = SUN_W / (4 * np.pi * a * a * np.sqrt(1 - e * e))
+    flux = mean_sunlight(a, e)
     n = np.sqrt(GM_SUN / a**3)
     omega = 2 * np.pi / (period_h * 3600)
     cos_eps = np.cos(np.radians(obliquity_deg))

@@ -147,7 +147,6 @@ class Edges:
         pair = np.flatnonzero(self.count == 2)
         at = self._first[pair]
         left, right = self._facet[self._order[at]], self._facet[self._order[at + 1]] if len(at) else at
-        self.paired = pair
         self.pair_facets = np.stack([left, right], axis=1)
         self.pair_same_sense = self._up[at] == self._up[at + 1] if len(at) else np.zeros(0, bool)
         self.same_sense = pair[self.pair_same_sense]

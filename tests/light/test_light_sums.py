@@ -21,7 +21,6 @@ from smallbody.light import (
     sun_on_body,
 )
 from smallbody.light._sunlight import _day, _rank
-from smallbody.light.sunlight import _ranks
 from smallbody.shape import Shape, make_shape
 from smallbody.workers import thread_count
 
@@ -66,7 +65,7 @@ def test_the_means_of_a_day_are_the_textbooks_in_the_corners():
 @given(st.lists(st.floats(-1, 1), min_size=1, max_size=60), st.lists(st.floats(-2, 2, width=32), min_size=1))
 def test_the_rank_of_a_latitude_agrees_with_counting(latitudes, ends):
     sun = sun_at(latitudes)
-    by_latitude, ranked, cells = _ranks(sun)
+    by_latitude, ranked, cells = sun.ranks
     assert (sun.sin_latitude[by_latitude] == ranked).all()
     for x in ends:
         # a latitude within round-off of a cell's edge may count as below it

@@ -14,6 +14,7 @@ from scipy.spatial.transform import Rotation
 from smallbody.constants import AU_M, GM_SUN, SUN_W
 from smallbody.light import (
     eccentric_anomaly,
+    mean_sunlight,
     places_at,
     places_between,
     places_in_true_anomaly,
@@ -241,3 +242,9 @@ def test_a_circular_orbit_without_obliquity_moves_the_sun_at_the_mean_motion():
     places = places_between(A_M, 0.0, 6)
     assert_allclose(sun_on_body(places, 0.0, 0.0).ascension_rate, places.mean_motion, rtol=1e-14)
     assert_allclose(sun_on_body(places, np.pi, 0.0).ascension_rate, -places.mean_motion, rtol=1e-14)
+
+
+@pytest.mark.parametrize("e", [0.0, 0.4, 0.9, 0.97])
+def test_the_mean_sunlight_is_the_mean_over_the_places(e):
+    places = places_in_true_anomaly(A_M, e, 4096)
+    assert_allclose(mean_sunlight(A_M, e), places.weight @ places.flux_w_m2, rtol=1e-12)
